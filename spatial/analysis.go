@@ -1,0 +1,40 @@
+package spatial
+
+import "drumlin/mv"
+
+// Analysis is what the estimate says before the guard has seen it. All grids
+// lie on one planar lattice in metres (axis 0 east, axis 1 north).
+type Analysis struct {
+	Density mv.Grid // probability per square metre, integrates to 1
+	Counts  mv.Grid // events per node: the tally's linear binning weights of the unweighted count
+	Weights mv.Grid // the same for weights; no values when the run has none
+	Events  float64 // events mapped, n
+	Total   float64 // their total weight; Events when the run has no weights
+
+	KernelAtZero float64 // K_H(0), per square metre
+
+	RegionRule string      // "events" or "mass"
+	Regions    []Threshold // rising content, falling density
+	BandLevels []float64   // rising densities, per square metre; the lowest is the edge of what is drawn
+
+	Peaks []Summit // highest first
+}
+
+// Threshold is the density on the border of a highest density region.
+type Threshold struct {
+	Content float64 // 0.5 for the 50 % region
+	Density float64 // probability per square metre
+}
+
+// Summit is a local maximum of the density with its error, per square metre.
+type Summit struct {
+	At            XY
+	Density       float64
+	StandardError float64
+	SmoothingBias float64 // leading term ½ tr(H Hess f)
+}
+
+// Policy is what the guard enforces.
+type Policy struct {
+	MinEvents float64 // least events for every polygon part, hole and peak; default 10
+}
