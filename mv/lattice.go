@@ -65,3 +65,60 @@ type Grid struct {
 
 // NewGrid returns a grid of zeros on the lattice.
 func NewGrid(l Lattice) Grid { return Grid{Lattice: l, Values: make([]float64, l.Len())} }
+
+// Moments returns the weighted mean and covariance (row-major, divisor n-1
+// with n the effective sample size) of node weights. Linear binning keeps the
+// mean and adds about step^2/6 to each variance; that is taken off again.
+func (g Grid) Moments(n float64) (mean, cov []float64, err error) {
+	d := g.Dim()
+	var total float64
+	mean, cov = make([]float64, d), make([]float64, d*d)
+	at := make([]int, d)
+	each := func(f func(w float64)) {
+		clear(at)
+		for _, w := range g.Values {
+			if w != 0 {
+				f(w)
+			}
+			for k := range at {
+				if at[k]++; at[k] < g.N[k] {
+					break
+				}
+				at[k] = 0
+			}
+		}
+	}
+	each(func(w float64) {
+		total += w
+		for k := range d {
+			mean[k] += w * float64(at[k])
+		}
+	})
+	if !(total > 0) || !(n > 1) {
+		return nil, nil, fmt.Errorf("mv: moments: weights add to %g, effective sample size %g: %w", total, n, ErrDegenerate)
+	}
+	for k := range d {
+		mean[k] /= total
+	}
+	each(func(w float64) {
+		for i := range d {
+			for j := range i + 1 {
+				cov[i*d+j] += w * (float64(at[i]) - mean[i]) * (float64(at[j]) - mean[j])
+			}
+		}
+	})
+	for i := range d {
+		for j := range i + 1 {
+			c := cov[i*d+j] / total * n / (n - 1)
+			if i == j {
+				c = math.Max(0, c-1.0/6)
+			}
+			c *= g.Step[i] * g.Step[j]
+			cov[i*d+j], cov[j*d+i] = c, c
+		}
+	}
+	for k := range d {
+		mean[k] = g.Coord(k, 0) + mean[k]*g.Step[k]
+	}
+	return mean, cov, nil
+}

@@ -1,0 +1,166 @@
+package bandwidth
+
+import (
+	"math"
+
+	"gonum.org/v1/gonum/mat"
+
+	"drumlin/mv"
+)
+
+// pilotFor returns the unconstrained pilot for the functional of order r: the
+// G that minimises the squared norm of the leading bias vector
+//
+//	n^-1 D^k phi_G(0) + 1/2 sum_ij G_ij psi_(k+ei+ej),   |k| = r,
+//
+// every distinct k counted with its multiplicity, which keeps the norm, and so
+// G, equivariant under rotations. psi holds the functionals of order r+2.
+// Levenberg-Marquardt with analytic derivatives (heat equation: the derivative
+// of phi_G by G_ij is half D^(ei+ej) phi_G), from several starts. Source:
+// Chacon and Duong 2010.
+func pilotFor(r int, n float64, psi []float64, start mv.BandwidthMatrix) (mv.BandwidthMatrix, error) {
+	d := start.Dim()
+	c := coords{d, Full}
+	p := newBiasVector(r, d, n, psi)
+	best, bestNorm := mv.BandwidthMatrix{}, math.Inf(1)
+	for _, x := range starts(start, c) {
+		norm := p.descend(c, x)
+		h, err := mv.NewBandwidthMatrix(d, c.matrix(x))
+		if err == nil && norm < bestNorm*(1-1e-9) {
+			best, bestNorm = h, norm
+		}
+	}
+	if best.Dim() == 0 {
+		return start, ErrNoMinimum
+	}
+	return best, nil
+}
+
+type biasVector struct {
+	r, d  int
+	n     float64
+	index [][]int
+	root  []float64 // square roots of the multiplicities
+	psi   []float64
+	up2   [][]int // up2[k][i*d+j]: position of k+ei+ej among the indices of order r+2
+	high  [][]int // indices of order r+2
+}
+
+func newBiasVector(r, d int, n float64, psi []float64) *biasVector {
+	p := &biasVector{r: r, d: d, n: n, psi: psi, index: mv.MultiIndices(d, r), high: mv.MultiIndices(d, r+2)}
+	pos := map[string]int{}
+	for i, k := range p.high {
+		pos[key(k)] = i
+	}
+	for _, k := range p.index {
+		p.root = append(p.root, math.Sqrt(mv.Multiplicity(k)))
+		row := make([]int, d*d)
+		for i := range d {
+			for j := range d {
+				up := append([]int(nil), k...)
+				up[i]++
+				up[j]++
+				row[i*d+j] = pos[key(up)]
+			}
+		}
+		p.up2 = append(p.up2, row)
+	}
+	return p
+}
+
+func key(k []int) string {
+	b := make([]byte, len(k))
+	for i, v := range k {
+		b[i] = byte(v)
+	}
+	return string(b)
+}
+
+// at returns the residuals and, row by row, their derivatives by the entries of
+// G taken as independent.
+func (p *biasVector) at(g mv.BandwidthMatrix) (res []float64, jac [][]float64) {
+	low, high := mv.NormalDerivativesAtZero(g, p.r), mv.NormalDerivativesAtZero(g, p.r+2)
+	for q := range p.index {
+		v := low[q] / p.n
+		row := make([]float64, p.d*p.d)
+		for ij, up := range p.up2[q] {
+			v += 0.5 * g.At(ij/p.d, ij%p.d) * p.psi[up]
+			row[ij] = p.root[q] * (0.5*high[up]/p.n + 0.5*p.psi[up])
+		}
+		res = append(res, p.root[q]*v)
+		jac = append(jac, row)
+	}
+	return res, jac
+}
+
+// descend runs Levenberg-Marquardt in place and returns the squared norm at
+// the end.
+func (p *biasVector) descend(c coords, x []float64) float64 {
+	norm := func(x []float64) float64 {
+		h, err := mv.NewBandwidthMatrix(p.d, c.matrix(x))
+		if err != nil {
+			return math.Inf(1)
+		}
+		res, _ := p.at(h)
+		return dot(res, res)
+	}
+	m := c.len()
+	lambda := 1e-3
+	now := norm(x)
+	for range 200 {
+		h, err := mv.NewBandwidthMatrix(p.d, c.matrix(x))
+		if err != nil {
+			return math.Inf(1)
+		}
+		res, jacH := p.at(h)
+		jtj := mat.NewSymDense(m, nil)
+		jtr := mat.NewVecDense(m, nil)
+		for q := range res {
+			row := c.pull(x, jacH[q])
+			for a := range m {
+				jtr.SetVec(a, jtr.AtVec(a)+row[a]*res[q])
+				for b := a; b < m; b++ {
+					jtj.SetSym(a, b, jtj.At(a, b)+row[a]*row[b])
+				}
+			}
+		}
+		improved, moved := false, 0.0
+		for ; lambda < 1e12; lambda *= 8 {
+			damped := mat.NewSymDense(m, nil)
+			damped.CopySym(jtj)
+			for a := range m {
+				damped.SetSym(a, a, jtj.At(a, a)*(1+lambda)+1e-300)
+			}
+			var chol mat.Cholesky
+			var step mat.VecDense
+			if !chol.Factorize(damped) || chol.SolveVecTo(&step, jtr) != nil {
+				continue
+			}
+			trial := make([]float64, m)
+			moved = 0
+			for a := range m {
+				s := math.Max(-1, math.Min(1, step.AtVec(a)))
+				trial[a] = x[a] - s
+				moved = math.Max(moved, math.Abs(s))
+			}
+			if v := norm(trial); v < now {
+				copy(x, trial)
+				now, improved = v, true
+				lambda = math.Max(lambda/10, 1e-15)
+				break
+			}
+		}
+		if !improved || moved < 1e-13 {
+			break
+		}
+	}
+	return now
+}
+
+func dot(a, b []float64) float64 {
+	var s float64
+	for i := range a {
+		s += a[i] * b[i]
+	}
+	return s
+}

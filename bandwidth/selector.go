@@ -1,0 +1,121 @@
+package bandwidth
+
+import (
+	"errors"
+	"fmt"
+	"math"
+
+	"drumlin/mv"
+)
+
+// Shape is the form that a bandwidth matrix may take.
+type Shape int
+
+// Shapes of bandwidth matrices.
+const (
+	Full     Shape = iota // any symmetric positive definite matrix
+	Diagonal              // one scale per axis
+	Scalar                // h*h*I
+)
+
+var shapeNames = []string{"full", "diagonal", "scalar"}
+
+// String returns "full", "diagonal" or "scalar".
+func (s Shape) String() string { return shapeNames[s] }
+
+// ParseShape is the inverse of String.
+func ParseShape(name string) (Shape, error) {
+	for i, n := range shapeNames {
+		if n == name {
+			return Shape(i), nil
+		}
+	}
+	return 0, fmt.Errorf("bandwidth: shape %q is none of full, diagonal, scalar", name)
+}
+
+// ErrNoMinimum: a criterion without a usable minimum for these data.
+var ErrNoMinimum = errors.New("no minimum")
+
+// Status says how a search ended.
+type Status int
+
+// Ends of a search.
+const (
+	Closed    Status = iota // a closed form, nothing was searched
+	Converged               // a minimum, found from every start
+	Several                 // several local minima; the lowest was taken
+	Stopped                 // the search ended before it converged
+)
+
+// String names the status for people.
+func (s Status) String() string {
+	return [...]string{"closed form", "converged", "several minima, lowest taken", "stopped before convergence"}[s]
+}
+
+// Pilot is one stage of a selector.
+type Pilot struct {
+	Order  int // of the functional it estimates
+	Matrix mv.BandwidthMatrix
+	Psi    []float64 // the functional there, in the order of mv.MultiIndices
+}
+
+// Choice is a bandwidth matrix with its evidence. All values are in the units
+// of the data.
+type Choice struct {
+	Method      string
+	Shape       Shape
+	Stages      int
+	Matrix      mv.BandwidthMatrix
+	Pilots      []Pilot // from the first stage to the last
+	Criterion   float64 // value of the criterion at Matrix (estimated AMISE for plug-in)
+	Variance    float64 // its integrated variance part, R(K)/(n |H|^1/2)
+	Bias2       float64 // its integrated squared bias part
+	Status      Status
+	Evaluations int
+	Notes       []string
+}
+
+// gaussR returns R(K) of the Gaussian kernel, (4 pi)^(-d/2). Source: closed form.
+func gaussR(d int) float64 { return math.Pow(4*math.Pi, -float64(d)/2) }
+
+// Events is what selectors work on: the spectrum and second moments of the
+// binned events.
+type Events struct {
+	Spectrum   *mv.Spectrum
+	Covariance []float64 // S, row-major, divisor n-1
+}
+
+func (e Events) dim() int { return e.Spectrum.Dim() }
+
+// scale returns sqrt(tr S / d), the common scale by which every selector
+// divides the data, so that its result does not depend on their unit or, in
+// the plane, on the orientation of the axes.
+func (e Events) scale() float64 {
+	var tr float64
+	d := e.dim()
+	for i := range d {
+		tr += e.Covariance[i*d+i]
+	}
+	return math.Sqrt(tr / float64(d))
+}
+
+// check refuses events without spread.
+func (e Events) check() error {
+	d := e.dim()
+	n := e.Spectrum.EffectiveN()
+	if n < float64(d+1) {
+		return fmt.Errorf("bandwidth: %g events (effective) in %d dimensions, at least %d are needed: %w", n, d, d+1, mv.ErrDegenerate)
+	}
+	if s := e.scale(); !(s > 0) {
+		return fmt.Errorf("bandwidth: all events at one point: %w", mv.ErrDegenerate)
+	}
+	s, err := mv.NewBandwidthMatrix(d, e.Covariance)
+	if err == nil {
+		v := s.Eigenvalues()
+		if v[d-1] > 1e-8*v[0] {
+			return nil
+		}
+		err = fmt.Errorf("principal variances %.6g to %.6g", v[0], v[d-1])
+	}
+	return fmt.Errorf("bandwidth: the events lie on a line or close to it (%v): %w", err, mv.ErrDegenerate)
+}
