@@ -43,15 +43,11 @@ type biasVector struct {
 	root  []float64 // square roots of the multiplicities
 	psi   []float64
 	up2   [][]int // up2[k][i*d+j]: position of k+ei+ej among the indices of order r+2
-	high  [][]int // indices of order r+2
 }
 
 func newBiasVector(r, d int, n float64, psi []float64) *biasVector {
-	p := &biasVector{r: r, d: d, n: n, psi: psi, index: mv.MultiIndices(d, r), high: mv.MultiIndices(d, r+2)}
-	pos := map[string]int{}
-	for i, k := range p.high {
-		pos[key(k)] = i
-	}
+	p := &biasVector{r: r, d: d, n: n, psi: psi, index: mv.MultiIndices(d, r)}
+	pos := positions(d, r+2)
 	for _, k := range p.index {
 		p.root = append(p.root, math.Sqrt(mv.Multiplicity(k)))
 		row := make([]int, d*d)

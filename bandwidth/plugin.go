@@ -45,45 +45,11 @@ func PlugIn(e Events, shape Shape, stages int) (Choice, error) {
 	}
 	c := Choice{Method: "plug-in", Shape: shape, Stages: stages}
 
-	// Normal reference for the top of the chain.
-	top := 2*stages + 4
-	twice := make([]float64, d*d)
-	for i, v := range s {
-		twice[i] = 2 * v
-	}
-	sum2, err := mv.NewBandwidthMatrix(d, twice)
+	psi, pilots, notes, err := chain(e, s, unit, 2*stages+2, 4)
 	if err != nil {
 		return Choice{}, fmt.Errorf("bandwidth: plug-in: %w", err)
 	}
-	psi := mv.NormalDerivativesAtZero(sum2, top)
-	free := e.Spectrum.Free()
-	for r := top - 2; r >= 4; r -= 2 {
-		start, err := NormalScalePilot(s, d, n, r)
-		if err != nil {
-			return Choice{}, err
-		}
-		g := start
-		if r < top-2 { // the first pilot is the normal scale one, exactly
-			if g, err = pilotFor(r, n, psi, start); err != nil {
-				return Choice{}, fmt.Errorf("bandwidth: plug-in: pilot of order %d: %w", r, err)
-			}
-		}
-		real, err := g.Scaled(unit * unit)
-		if err != nil {
-			return Choice{}, fmt.Errorf("bandwidth: plug-in: pilot of order %d: %w", r, err)
-		}
-		for k := range d {
-			if need := 7 * math.Sqrt(real.At(k, k)); need > 1.01*free[k] {
-				c.Notes = append(c.Notes, fmt.Sprintf("the pilot of order %d reaches %.4g on axis %d, the transform is free of wrap-around for %.4g", r, need, k+1, free[k]))
-			}
-		}
-		values := e.Spectrum.Functional(r, real)
-		c.Pilots = append(c.Pilots, Pilot{Order: r, Matrix: real, Psi: append([]float64(nil), values...)})
-		psi = values
-		for i := range psi {
-			psi[i] *= math.Pow(unit, float64(d+r))
-		}
-	}
+	c.Pilots, c.Notes = pilots, notes
 
 	psi4 := tensor4(d, psi)
 	start, err := normalScale(s, d, n, 4/((float64(d)+2)*n), 2/(float64(d)+4), Full)
@@ -105,12 +71,43 @@ func PlugIn(e Events, shape Shape, stages int) (Choice, error) {
 	return c, nil
 }
 
+// chain estimates the functionals of order bottom from those of the normal
+// with covariance s, down from order top: a pilot for order top by the normal
+// scale rule, its functionals, from them the next pilot, and so on in steps of
+// two. s and the functionals returned are in units of the common scale unit,
+// the pilots in those of the data.
+func chain(e Events, s []float64, unit float64, top, bottom int) (psi []float64, pilots []Pilot, notes []string, err error) {
+	d, n := e.dim(), e.Spectrum.EffectiveN()
+	free := e.Spectrum.Free()
+	for r := top; r >= bottom; r -= 2 {
+		g, err := NormalScalePilot(s, d, n, r)
+		if err == nil && r < top {
+			g, err = pilotFor(r, n, psi, g)
+		}
+		if err != nil {
+			return nil, nil, nil, fmt.Errorf("pilot of order %d: %w", r, err)
+		}
+		real, err := g.Scaled(unit * unit)
+		if err != nil {
+			return nil, nil, nil, fmt.Errorf("pilot of order %d: %w", r, err)
+		}
+		for k := range d {
+			if need := 7 * math.Sqrt(real.At(k, k)); need > 1.01*free[k] {
+				notes = append(notes, fmt.Sprintf("the pilot of order %d reaches %.4g on axis %d, the transform is free of wrap-around for %.4g", r, need, k+1, free[k]))
+			}
+		}
+		psi = e.Spectrum.Functional(r, real)
+		pilots = append(pilots, Pilot{Order: r, Matrix: real, Psi: append([]float64(nil), psi...)})
+		for i := range psi {
+			psi[i] *= math.Pow(unit, float64(d+r))
+		}
+	}
+	return psi, pilots, notes, nil
+}
+
 // tensor4 spreads the functionals of order 4 over all (i, j, k, l).
 func tensor4(d int, psi []float64) []float64 {
-	pos := map[string]int{}
-	for i, k := range mv.MultiIndices(d, 4) {
-		pos[key(k)] = i
-	}
+	pos := positions(d, 4)
 	out := make([]float64, d*d*d*d)
 	for at := range out {
 		k := make([]int, d)

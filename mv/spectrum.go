@@ -46,6 +46,7 @@ type Spectrum struct {
 	freq    [][]float64 // angular frequency of each kept bin, per axis
 	total   float64     // sum of weights
 	n       float64     // effective n
+	extent  []float64   // length that the events occupy on each axis
 	workers int
 }
 
@@ -82,6 +83,7 @@ func NewSpectrum(counts Grid, opt SpectrumOptions) (*Spectrum, error) {
 			return nil, fmt.Errorf("mv: spectrum: %v padded nodes and more, 2^28 at most: %w", padFine[:k+1], ErrTooLarge)
 		}
 	}
+	s.extent = occupiedExtent(counts)
 	s.half = fft.Forward(counts.Values, counts.N, padFine, s.pad, s.workers)
 	s.freq = make([][]float64, d)
 	hat := make([][]float64, d) // 1/sinc^2 of half the phase step
@@ -151,14 +153,41 @@ func (s *Spectrum) Lattice() Lattice { return s.lat }
 // EffectiveN returns (sum w)^2 / sum w^2.
 func (s *Spectrum) EffectiveN() float64 { return s.n }
 
-// Free returns the length per axis that is free of wrap-around beyond the
-// counts: seven scales of a matrix must fit into it.
+// Free returns the length per axis between the events and their next periodic
+// copies: seven scales of a matrix must fit into it for its sums to be free of
+// wrap-around.
 func (s *Spectrum) Free() []float64 {
 	free := make([]float64, s.Dim())
 	for k := range free {
-		free[k] = s.lat.Step[k] * float64(s.pad[k]-s.lat.N[k])
+		free[k] = s.lat.Step[k]*float64(s.pad[k]) - s.extent[k]
 	}
 	return free
+}
+
+// occupiedExtent returns the distance between the outermost nodes that carry
+// something, per axis.
+func occupiedExtent(g Grid) []float64 {
+	d := g.Dim()
+	lo, hi, at := make([]int, d), make([]int, d), make([]int, d)
+	copy(lo, g.N)
+	for _, w := range g.Values {
+		if w != 0 {
+			for k, i := range at {
+				lo[k], hi[k] = min(lo[k], i), max(hi[k], i)
+			}
+		}
+		for k := range at {
+			if at[k]++; at[k] < g.N[k] {
+				break
+			}
+			at[k] = 0
+		}
+	}
+	out := make([]float64, d)
+	for k := range out {
+		out[k] = g.Step[k] * float64(max(0, hi[k]-lo[k]))
+	}
+	return out
 }
 
 // dead is the exponent below which a Gaussian factor counts as zero: e^-37 is

@@ -36,5 +36,6 @@ type Summit struct {
 
 // Policy is what the guard enforces.
 type Policy struct {
-	MinEvents float64 // least events for every polygon part, hole and peak; default 10
+	MinEvents float64 // least events for every polygon part, hole and peak; 1 or less switches the guard off
+	Workers   int     // goroutines; default all CPUs. The release does not depend on it
 }

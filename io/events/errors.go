@@ -30,11 +30,12 @@ type Fault struct {
 // Error prints one line: file, place, what is wrong, what to do.
 func (f *Fault) Error() string {
 	var b strings.Builder
-	b.WriteString(f.File)
-	if f.Where != "" {
-		b.WriteString(": " + f.Where)
+	for _, s := range []string{f.File, f.Where} {
+		if s != "" {
+			b.WriteString(s + ": ")
+		}
 	}
-	b.WriteString(": " + f.What)
+	b.WriteString(f.What)
 	if f.Cause != nil {
 		b.WriteString(": " + oneLine(f.Cause.Error()))
 	}

@@ -1,0 +1,133 @@
+package spatial
+
+import (
+	"cmp"
+	"math"
+	"slices"
+)
+
+// addRegions builds the released regions in rising content.
+func (r *Release) addRegions(a Analysis, f *family, levels []float64, proj Projection) error {
+	rising := slices.Clone(a.Regions)
+	slices.SortStableFunc(rising, func(x, y Threshold) int { return cmp.Compare(x.Content, y.Content) })
+	for _, t := range rising {
+		k, _ := slices.BinarySearch(levels, t.Density)
+		o := f.atOr[k]
+		if !f.bordered(o, k) {
+			r.withheld.Regions = append(r.withheld.Regions, t.Content)
+			continue
+		}
+		in := f.d.in(func(label int) bool { return label > k })
+		out := Region{Content: t.Content, Rule: a.RegionRule, ThresholdPerKM2: f.s.levels[k] * a.Total * perKM2, Plane: f.s.polygons(o)}
+		out.Mass, out.Events, out.Weight = f.m.union(in)
+		area := f.area(in)
+		out.AreaKM2 = area / perKM2
+		out.MeanPerKM2 = a.Total * out.Mass / area * perKM2
+		if a.Events > 0 {
+			out.EventShare = out.Events.Estimate / a.Events
+		}
+		var err error
+		if out.Shape, err = assemble(o, f.grid, proj); err != nil {
+			return err
+		}
+		if !proj.EqualArea() {
+			out.AreaKM2 = EllipsoidArea(out.Shape) / perKM2
+		}
+		r.regions = append(r.regions, out)
+		f.kept = append(f.kept, k)
+	}
+	return nil
+}
+
+// addBands builds the released bands in rising intensity.
+func (r *Release) addBands(a Analysis, f *family, proj Projection) error {
+	for k := 1; k <= len(f.s.levels); k++ {
+		o := f.equal[k]
+		if len(o) == 0 {
+			continue
+		}
+		in := f.d.in(func(label int) bool { return label == k })
+		out := Band{FromPerKM2: f.s.levels[k-1] * a.Total * perKM2, ToPerKM2: math.Inf(1), Plane: f.s.polygons(o)}
+		if k < len(f.s.levels) {
+			out.ToPerKM2 = f.s.levels[k] * a.Total * perKM2
+		}
+		out.Mass, out.Events, _ = f.m.union(in)
+		out.AreaKM2 = f.area(in) / perKM2
+		var err error
+		if out.Shape, err = assemble(o, f.grid, proj); err != nil {
+			return err
+		}
+		if !proj.EqualArea() {
+			out.AreaKM2 = EllipsoidArea(out.Shape) / perKM2
+		}
+		r.bands = append(r.bands, out)
+	}
+	return nil
+}
+
+// bordered reports whether any ring of level k is part of the outline.
+func (f *family) bordered(o outline, k int) bool {
+	for _, rings := range o {
+		for _, id := range rings {
+			if int(f.s.rings[id].level) == k {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// area adds up the faces of a set, square metres.
+func (f *family) area(in func(face int32) bool) float64 {
+	var sum float64
+	for n, v := range f.s.area {
+		if in(int32(n)) {
+			sum += v
+		}
+	}
+	return sum
+}
+
+// labelAt returns the released label at a position.
+func (f *family) labelAt(at XY) int { return int(f.d.label[f.s.Locate(at)]) }
+
+// addPeaks keeps the peaks that rest on enough events and lie in something
+// released, ranked by intensity.
+func (r *Release) addPeaks(a Analysis, fams [2]*family, p Policy, proj Projection) {
+	for _, t := range a.Peaks {
+		effective := a.Events * t.Density / a.KernelAtZero
+		region, band := fams[0].labelAt(t.At), fams[1].labelAt(t.At)
+		if !(effective >= p.MinEvents) || region+band == 0 && len(a.Regions)+len(a.BandLevels) > 0 {
+			r.withheld.Peaks++
+			continue
+		}
+		out := Peak{
+			At:                  t.At,
+			IntensityPerKM2:     a.Total * t.Density * perKM2,
+			StandardErrorPerKM2: a.Total * t.StandardError * perKM2,
+			SmoothingBiasPerKM2: a.Total * t.SmoothingBias * perKM2,
+			DebiasedPerKM2:      a.Total * (t.Density - t.SmoothingBias) * perKM2,
+			EffectiveEvents:     effective,
+		}
+		if n := slices.IndexFunc(fams[0].kept, func(k int) bool { return region > k }); n >= 0 {
+			out.Region = r.regions[n].Content // rising content, so the first is the smallest
+		}
+		out.Position = position(t.At, proj)
+		r.peaks = append(r.peaks, out)
+	}
+	slices.SortStableFunc(r.peaks, func(x, y Peak) int { return cmp.Compare(y.IntensityPerKM2, x.IntensityPerKM2) })
+	for n := range r.peaks {
+		r.peaks[n].Rank = n + 1
+	}
+}
+
+// position returns degrees rounded to seven decimals within [-180, 180], or
+// metres rounded to a millimetre on a plane without a place.
+func position(at XY, proj Projection) LonLat {
+	if proj.CRS().Method == "plane" {
+		return LonLat{math.Round(at.X*metreUnits) / metreUnits, math.Round(at.Y*metreUnits) / metreUnits}
+	}
+	ll := proj.Inverse(XYs{X: []float64{at.X}, Y: []float64{at.Y}})
+	g := roundDegrees(LonLat{math.Remainder(ll.Lon[0], 360), ll.Lat[0]})
+	return LonLat{float64(g.x) / degreeUnits, float64(g.y) / degreeUnits}
+}
