@@ -155,6 +155,19 @@ func TestAdaptiveBiasOrder(t *testing.T) {
 	}
 }
 
+// With a flat pilot every factor is 1 and the estimate is the plain one.
+func TestAdaptiveConforms(t *testing.T) {
+	for _, step := range []float64{0, 0.1} {
+		mvtest.Conform(t, func(s *mv.Sample, k mv.Kernel, h mv.BandwidthMatrix) (mv.Evaluator, error) {
+			flat := make([]float64, s.Len())
+			for i := range flat {
+				flat[i] = 0.25
+			}
+			return mv.NewAdaptive(s, k, h, flat, mv.AdaptiveOptions{Step: step, Rtol: 1e-11})
+		}, mvtest.Conformance{Rel: 1e-10, Dims: []int{1, 2}})
+	}
+}
+
 func TestAdaptiveDoor(t *testing.T) {
 	s, h := mvtest.P12(1), mvtest.P12H(1)
 	pilot := pilotAtEvents(t, s, mv.Gaussian, h)

@@ -108,7 +108,9 @@ func (e *Direct) each(ctx context.Context, dst []float64, queries [][]float64, v
 	})
 }
 
-// distances writes the squared whitened distances from q to events lo..hi.
+// distances writes the squared whitened distances from q to the rows of z. The
+// conversions forbid fused operations, so that every architecture rounds as
+// the tree's boxes do.
 func distances(r2 []float64, z []float64, d int, q []float64) {
 	switch d {
 	case 1:
@@ -122,7 +124,7 @@ func distances(r2 []float64, z []float64, d int, q []float64) {
 		z = z[:2*len(r2)]
 		for i := range r2 {
 			t, u := q0-z[2*i], q1-z[2*i+1]
-			r2[i] = t*t + u*u
+			r2[i] = float64(t*t) + float64(u*u)
 		}
 	default:
 		q = q[:d]
@@ -131,7 +133,7 @@ func distances(r2 []float64, z []float64, d int, q []float64) {
 			var sum float64
 			for k, v := range q {
 				t := v - row[k]
-				sum += t * t
+				sum += float64(t * t)
 			}
 			r2[i] = sum
 		}

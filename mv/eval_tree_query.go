@@ -32,7 +32,7 @@ func (q *treeQuery) look(i int) (s2, near2, far2, t float64) {
 		q.s[0], q.s[1] = s0, s1
 		n0, n1 := max(l0-q0, q0-h0, 0), max(l1-q1, q1-h1, 0)
 		f0, f1 := max(q0-l0, h0-q0), max(q1-l1, h1-q1)
-		return s0*s0 + s1*s1, n0*n0 + n1*n1, f0*f0 + f1*f1, (math.Abs(s0)*(h0-l0) + math.Abs(s1)*(h1-l1)) / 2
+		return s0*s0 + s1*s1, float64(n0*n0) + float64(n1*n1), float64(f0*f0) + float64(f1*f1), (math.Abs(s0)*(h0-l0) + math.Abs(s1)*(h1-l1)) / 2
 	}
 	low, high := box[:d], box[d:2*d]
 	for k, v := range q.q {
@@ -41,9 +41,9 @@ func (q *treeQuery) look(i int) (s2, near2, far2, t float64) {
 		q.s[k] = s
 		s2 += s * s
 		n := max(l-v, v-h, 0)
-		near2 += n * n
+		near2 += float64(n * n)
 		f := max(v-l, h-v)
-		far2 += f * f
+		far2 += float64(f * f)
 		t += math.Abs(s) * (h - l)
 	}
 	return s2, near2, far2, t / 2

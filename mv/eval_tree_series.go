@@ -96,7 +96,7 @@ func newSeriesPlan(k Kernel, d int) *seriesPlan {
 			}
 		}
 	}
-	p.leaf = min(max(8, p.few), 16)
+	p.leaf = min(max(8, p.few), 64)
 	return p
 }
 

@@ -4,12 +4,13 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 
 	"github.com/paulmach/orb"
 )
 
 // ErrUnsupportedGeometry reports a shape that cannot be written in degrees: it
-// goes around a pole, or leaves the projection's domain.
+// leaves the projection's domain or goes around a pole more than once.
 var ErrUnsupportedGeometry = errors.New("geometry not supported")
 
 // errTouch reports rings that meet after rounding.
@@ -37,10 +38,11 @@ const (
 // same whichever way the ring runs. On a plane without a place the numbers
 // stay metres, rounded to a millimetre, and nothing is cut.
 //
-// Errors: ErrUnsupportedGeometry for a ring around a pole or outside the
-// projection's domain; an error when rings meet each other after rounding, so
+// Errors: ErrUnsupportedGeometry for a ring outside the projection's domain or
+// more than once around a pole; an error when rings meet each other after rounding, so
 // what comes back is valid in the sense of OGC Simple Features as long as the
-// holes of mp lie inside their exteriors. Cost: one inverse per vertex plus
+// holes of mp lie inside their exteriors. A polygon around a pole gets the pole
+// as a side, from -180 to 180 at latitude 90. Cost: one inverse per vertex plus
 // O(n log n).
 func ToShape(mp MultiPolygon, proj Projection) (orb.MultiPolygon, error) {
 	var rings []Ring
@@ -100,6 +102,9 @@ func roundRings(rings []Ring, proj Projection) ([]gridRing, error) {
 		if err != nil {
 			return nil, err
 		}
+		if g.winds() && ring.Area() < 0 {
+			slices.Reverse(g)
+		}
 		out[r] = tidy(g)
 	}
 	return out, nil
@@ -116,7 +121,7 @@ func tidy(g gridRing) gridRing {
 	for len(out) > 1 && out[0] == out[len(out)-1] {
 		out = out[:len(out)-1]
 	}
-	if len(out) < 3 || out.area() == 0 {
+	if len(out) < 3 || out.area() == 0 && !out.winds() {
 		return nil
 	}
 	return out
@@ -135,7 +140,15 @@ func (g gridRing) area() float64 {
 }
 
 // oriented returns the ring anticlockwise or clockwise, from its first vertex.
+// A ring around a pole comes from roundRings anticlockwise.
 func (g gridRing) oriented(anticlockwise bool) gridRing {
+	if g.winds() {
+		if !anticlockwise {
+			g = slices.Clone(g)
+			slices.Reverse(g)
+		}
+		return g
+	}
 	if (g.area() > 0) == anticlockwise {
 		return g
 	}
@@ -189,7 +202,7 @@ func assemble(o outline, rings []gridRing, proj Projection) (orb.MultiPolygon, e
 		if err != nil {
 			return nil, fmt.Errorf("spatial: cut at the antimeridian: %w", err)
 		}
-		anyCut = anyCut || len(cut) > 1
+		anyCut = anyCut || len(cut) > 1 || p[0].winds()
 		parts = append(parts, cut...)
 	}
 	if anyCut {

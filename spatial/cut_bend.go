@@ -45,11 +45,15 @@ func (b *bender) ring(xy Ring, lon, lat []float64) (gridRing, error) {
 		}
 	}
 	last := lon[0] + stepTurn(lon[0]-before)
-	if math.Abs(last-lon[0]) > 180 {
-		return nil, fmt.Errorf("spatial: a ring goes around a pole: %w; choose a smaller area or --crs plane", ErrUnsupportedGeometry)
+	turns := math.Round((last - lon[0]) / 360)
+	if math.Abs(turns) > 1 {
+		return nil, fmt.Errorf("spatial: a ring goes %g times around a pole: %w", turns, ErrUnsupportedGeometry)
 	}
 	if n := len(xy) - 1; bent && n > 0 {
 		out = b.chord(out, xy[n], xy[0], LonLat{before, lat[n]}, LonLat{last, lat[0]}, 12)
+	}
+	if turns != 0 {
+		out = append(out, gridPoint{out[0].x + int64(turns)*turn, out[0].y})
 	}
 	return out, nil
 }

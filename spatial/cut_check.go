@@ -2,9 +2,34 @@ package spatial
 
 import (
 	"cmp"
+	"fmt"
 	"math/bits"
 	"slices"
+
+	"github.com/paulmach/orb"
+	"github.com/peterstace/simplefeatures/geom"
 )
+
+// checkOGC has a finished shape judged by an independent implementation of the
+// rules of OGC Simple Features. It takes some 3 microseconds a position.
+func checkOGC(mp orb.MultiPolygon) error {
+	polygons := make([]geom.Polygon, len(mp))
+	for i, p := range mp {
+		rings := make([]geom.LineString, len(p))
+		for n, r := range p {
+			xy := make([]float64, 0, 2*len(r))
+			for _, v := range r {
+				xy = append(xy, v[0], v[1])
+			}
+			rings[n] = geom.NewLineString(geom.NewSequence(xy, geom.DimXY))
+		}
+		polygons[i] = geom.NewPolygon(rings)
+	}
+	if err := geom.NewMultiPolygon(polygons).Validate(); err != nil {
+		return fmt.Errorf("spatial: shape is not valid: %w", err)
+	}
+	return nil
+}
 
 // gridSegment is one side of a ring.
 type gridSegment struct {
@@ -14,7 +39,7 @@ type gridSegment struct {
 }
 
 // checkRings returns errTouch unless every ring is simple and no two rings
-// meet, not even in a point. The arithmetic is exact. Strips of latitude, each
+// meet, not even in a point. Longitudes are compared as they stand. The arithmetic is exact. Strips of latitude, each
 // swept by longitude, keep it near n log n for segments of similar length.
 func checkRings(rings []gridRing) error {
 	var segs []gridSegment
@@ -29,10 +54,13 @@ func checkRings(rings []gridRing) error {
 	var tall float64
 	lo, hi, left, right := int64(1)<<62, -int64(1)<<62, int64(1)<<62, -int64(1)<<62
 	for k, r := range rings {
+		winds := r.winds()
 		for i, a := range r {
 			b := r[0]
 			if i+1 < len(r) {
 				b = r[i+1]
+			} else if winds {
+				continue // around a pole: no side back to the first
 			}
 			s := gridSegment{a: a, b: b, x0: min(a.x, b.x), x1: max(a.x, b.x), y0: min(a.y, b.y), y1: max(a.y, b.y),
 				ring: int32(k), n: int32(i), last: int32(len(r) - 1)}

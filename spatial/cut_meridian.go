@@ -10,194 +10,196 @@ import (
 // rounded degrees, longitudes continuous.
 type gridPolygon []gridRing
 
-// cutWorld cuts the polygon along every antimeridian it crosses and moves the
-// parts into [-180, 180] degrees. A vertex exactly on an antimeridian is first
-// moved one unit (1e-7 degree) east, so that no ring touches the cut.
+const (
+	halfTurn = turn / 2
+	polarLat = int64(90 * degreeUnits)
+)
+
+// world returns which turn a longitude lies in: 0 for [-180, 180).
+func world(x int64) int64 {
+	k := (x + halfTurn) / turn
+	if (x+halfTurn)%turn < 0 {
+		k--
+	}
+	return k
+}
+
+// cutWorld cuts the polygon along the antimeridian and moves the parts into
+// [-180, 180] degrees. A vertex exactly on the antimeridian of a polygon that
+// crosses it is first moved one unit (1e-7 degree) east, so that no ring
+// touches the cut. A polygon around a pole goes up to the pole along the cut.
 func (p gridPolygon) cutWorld() ([]gridPolygon, error) {
+	polar := slices.ContainsFunc(p, gridRing.winds)
 	lo, hi := p[0].rangeX()
-	half := turn / 2
-	if lo >= -half && hi <= half {
-		return []gridPolygon{p}, nil
+	k := world(lo)
+	if !polar && lo >= -halfTurn && hi <= halfTurn {
+		k = 0
 	}
-	world := func(x int64) int64 { // which world a longitude lies in
-		k := (x + half) / turn
-		if (x+half)%turn < 0 {
-			k--
-		}
-		return k
-	}
-	if k := world(lo); hi <= k*turn+half { // one world, though not the middle one
+	if !polar && hi <= k*turn+halfTurn {
 		q := make(gridPolygon, len(p))
 		for i, r := range p {
 			q[i] = r.shifted(-k * turn)
 		}
 		return []gridPolygon{q}, nil
 	}
-	rest := gridPolygon{}
-	for _, r := range p {
-		q := slices.Clone(r)
-		for i := range q {
-			if (q[i].x+half)%turn == 0 {
-				q[i].x++
+	var c meridianCut
+	for i, r := range p {
+		r = slices.Clone(r)
+		for n := range r {
+			if (r[n].x+halfTurn)%turn == 0 {
+				r[n].x++
 			}
 		}
-		if q = tidy(q); q != nil {
-			rest = append(rest, q)
-		} else if len(rest) == 0 {
+		if r = tidy(r); r != nil {
+			c.add(r)
+		} else if i == 0 {
 			return nil, nil
 		}
 	}
-	var out []gridPolygon
-	todo := []gridPolygon{rest}
-	for len(todo) > 0 {
-		q := todo[0]
-		todo = todo[1:]
-		lo, hi := q[0].rangeX()
-		if lo == hi {
-			continue
-		}
-		k := world(lo)
-		if edge := k*turn + half; hi > edge {
-			west, east, err := q.cutAt(edge)
-			if err != nil {
-				return nil, err
-			}
-			out = append(out, shiftAll(west, -k*turn)...)
-			todo = append(todo, east...)
-			continue
-		}
-		out = append(out, shiftAll([]gridPolygon{q}, -k*turn)...)
-	}
-	return out, nil
+	return c.join()
 }
 
-func shiftAll(ps []gridPolygon, by int64) []gridPolygon {
-	for _, p := range ps {
-		for i, r := range p {
-			p[i] = r.shifted(by)
-		}
-	}
-	return ps
+// meridianCut holds the pieces of one polygon's rings, all within one world.
+// Of the two borders, 0 is the western (-180) and 1 the eastern (180).
+type meridianCut struct {
+	chains []gridRing
+	ends   []landing    // where each chain ends
+	whole  []gridRing   // rings that do not reach the cut
+	border [2][]landing // starts and ends on each border
 }
 
-// crossing is where a ring crosses the cut.
-type crossing struct {
-	y    int64
-	east bool // the ring goes east
-	west int  // chain on the west side that ends (east) or starts (!east) here
-	far  int  // chain on the east side that starts (east) or ends (!east) here
+// landing is a chain's start or end on a border.
+type landing struct {
+	y     int64
+	side  int
+	start bool
+	chain int
 }
 
-// cutAt splits the polygon at x = edge, on which no vertex lies. Along the cut
-// the crossings, sorted by latitude, bound what lies inside by twos: the west
-// side goes up the cut from the first to the second, the east side down.
-func (p gridPolygon) cutAt(edge int64) (west, east []gridPolygon, err error) {
-	var chains [2][]gridRing // 0 west, 1 east
-	var whole [2][]gridRing  // rings that do not cross
-	var cross []crossing
-	for n, r := range p {
-		lo, hi := r.rangeX()
-		if hi < edge || lo > edge {
-			side := 0
-			if lo > edge {
-				side = 1
-			}
-			if n == 0 {
-				return nil, nil, errTouch // the caller asks only for exteriors that cross
-			}
-			whole[side] = append(whole[side], r)
-			continue
-		}
-		chains, cross = r.split(edge, chains, cross)
+// add splits a ring at the cut, or keeps it whole.
+func (c *meridianCut) add(r gridRing) {
+	n := len(r)
+	if r.winds() {
+		n-- // the last position is the first, a turn on
 	}
-	slices.SortStableFunc(cross, func(a, b crossing) int { return cmp.Compare(a.y, b.y) })
-	for i := 0; i+1 < len(cross); i++ { // of two at one place, the one that fits comes first
-		if wrong := cross[i].east != (i%2 == 0); wrong && cross[i+1].y == cross[i].y {
-			cross[i], cross[i+1] = cross[i+1], cross[i]
+	after := func(i int) gridPoint { // the position that follows, longitudes continuous
+		if i+1 < len(r) {
+			return r[i+1]
 		}
+		return r[0]
 	}
-	next := [2]map[int]int{{}, {}}
-	for i := 0; i < len(cross); i += 2 {
-		if i+1 >= len(cross) || !cross[i].east || cross[i+1].east {
-			return nil, nil, errTouch
-		}
-		next[0][cross[i].west] = cross[i+1].west
-		next[1][cross[i+1].far] = cross[i].far
-	}
-	var sides [2][]gridPolygon
-	for side := range sides {
-		used := make([]bool, len(chains[side]))
-		for c := range chains[side] {
-			var loop gridRing
-			for k := c; !used[k]; k = next[side][k] {
-				used[k] = true
-				loop = append(loop, chains[side][k]...)
-			}
-			if loop = tidy(loop); loop != nil {
-				sides[side] = append(sides[side], gridPolygon{loop})
-			}
-		}
-		for _, h := range whole[side] {
-			for i, q := range sides[side] {
-				if q[0].contains(h[0]) {
-					sides[side][i] = append(q, h)
-					break
-				}
-			}
-		}
-	}
-	return sides[0], sides[1], nil
-}
-
-// split breaks a ring that crosses the cut into chains that start and end on
-// it, and appends them and the crossings.
-func (r gridRing) split(edge int64, chains [2][]gridRing, cross []crossing) ([2][]gridRing, []crossing) {
-	side := func(p gridPoint) int {
-		if p.x > edge {
-			return 1
-		}
-		return 0
-	}
-	start := 0 // the first vertex after a crossing
-	for side(r[start]) == side(r[(start+len(r)-1)%len(r)]) {
-		start++
-	}
-	before := r[(start+len(r)-1)%len(r)]
-	entry := gridPoint{edge, latitudeAt(before, r[start], edge)}
-	firstCross := len(cross)
-	cross = append(cross, crossing{y: entry.y, east: side(r[start]) == 1})
-	chain := gridRing{entry}
-	at := firstCross // where the chain started
-	finish := func(end int) {
-		s := side(chain[1])
-		chains[s] = append(chains[s], chain)
-		id := len(chains[s]) - 1
-		for _, c := range []int{at, end} {
-			if s == 0 {
-				cross[c].west = id
-			} else {
-				cross[c].far = id
-			}
-		}
-	}
-	for n := range r {
-		p, q := r[(start+n)%len(r)], r[(start+n+1)%len(r)]
-		chain = append(chain, p)
-		if side(p) == side(q) {
-			continue
-		}
-		y := latitudeAt(p, q, edge)
-		chain = append(chain, gridPoint{edge, y})
-		if n == len(r)-1 {
-			finish(firstCross)
+	first := -1 // the first side of the ring that crosses
+	for i := range n {
+		if world(r[i].x) != world(after(i).x) {
+			first = i
 			break
 		}
-		cross = append(cross, crossing{y: y, east: side(q) == 1})
-		finish(len(cross) - 1)
-		at = len(cross) - 1
-		chain = gridRing{{edge, y}}
 	}
-	return chains, cross
+	if first < 0 {
+		c.whole = append(c.whole, r.shifted(-world(r[0].x)*turn))
+		return
+	}
+	var chain gridRing
+	var from landing
+	for m := range n + 1 {
+		i := (first + m) % n
+		p, q := r[i], after(i)
+		k := world(p.x)
+		if m > 0 {
+			chain = append(chain, gridPoint{p.x - k*turn, p.y})
+		}
+		if world(q.x) == k {
+			continue
+		}
+		east := q.x > p.x
+		edge := k*turn - halfTurn
+		out := landing{side: 0}
+		if east {
+			edge += turn
+			out.side = 1
+		}
+		out.y = latitudeAt(p, q, edge)
+		if m > 0 {
+			out.chain = len(c.chains)
+			from.chain = out.chain
+			c.chains = append(c.chains, append(chain, gridPoint{borderX(out.side), out.y}))
+			c.ends = append(c.ends, out)
+			c.border[from.side] = append(c.border[from.side], from)
+			c.border[out.side] = append(c.border[out.side], out)
+		}
+		from = landing{y: out.y, side: 1 - out.side, start: true}
+		chain = gridRing{{borderX(from.side), from.y}}
+	}
+}
+
+func borderX(side int) int64 { return (2*int64(side) - 1) * halfTurn }
+
+// join closes the chains along the borders with the inside on the left: up the
+// eastern border, down the western, and over a pole where a border has no
+// further start. Rings that did not reach the cut become holes of the part that
+// contains them. Parts further east come first.
+func (c *meridianCut) join() ([]gridPolygon, error) {
+	for side, b := range c.border {
+		slices.SortStableFunc(b, func(x, y landing) int {
+			if side == 0 {
+				x, y = y, x // order of travel: downwards
+			}
+			return cmp.Compare(x.y, y.y)
+		})
+		open := len(b) > 0 && b[0].start // the first start belongs to a way over the pole
+		for i := 0; i+1 < len(b); i++ {  // of two at one place, the one that fits comes first
+			if want := (i%2 == 0) == open; b[i].start != want && b[i+1].y == b[i].y {
+				b[i], b[i+1] = b[i+1], b[i]
+			}
+		}
+		for i := 1; i < len(b); i++ {
+			if b[i].start == b[i-1].start {
+				return nil, errTouch
+			}
+		}
+	}
+	follow := func(at landing) (chain int, way gridRing, ok bool) {
+		b := c.border[at.side]
+		i := slices.Index(b, at) + 1
+		if i < len(b) {
+			return b[i].chain, nil, true
+		}
+		other := c.border[1-at.side] // over the pole and back on the other border
+		if len(other) == 0 || !other[0].start {
+			return 0, nil, false
+		}
+		pole := borderX(at.side) / halfTurn * polarLat
+		return other[0].chain, gridRing{{borderX(at.side), pole}, {borderX(1 - at.side), pole}}, true
+	}
+	var out []gridPolygon
+	used := make([]bool, len(c.chains))
+	for n := range c.chains {
+		var loop gridRing
+		for k := n; !used[k]; {
+			used[k] = true
+			loop = append(loop, c.chains[k]...)
+			next, way, ok := follow(c.ends[k])
+			if !ok || used[next] && next != n {
+				return nil, errTouch
+			}
+			loop = append(loop, way...)
+			k = next
+		}
+		if loop = tidy(loop); loop != nil {
+			out = append(out, gridPolygon{loop})
+		}
+	}
+	slices.SortStableFunc(out, func(p, q gridPolygon) int {
+		_, a := p[0].rangeX()
+		_, b := q[0].rangeX()
+		return cmp.Compare(b, a)
+	})
+	for _, h := range c.whole {
+		if i := slices.IndexFunc(out, func(q gridPolygon) bool { return q[0].contains(h[0]) }); i >= 0 {
+			out[i] = append(out[i], h)
+		}
+	}
+	return out, nil
 }
 
 // latitudeAt returns the rounded latitude where the segment meets x = edge. It
@@ -226,4 +228,11 @@ func (g gridRing) contains(p gridPoint) bool {
 		}
 	}
 	return in
+}
+
+// winds reports whether the ring goes around a pole. Such a ring is kept open:
+// its last position is its first, a whole turn of longitude on.
+func (g gridRing) winds() bool {
+	n := len(g) - 1
+	return n > 0 && g[0].y == g[n].y && (g[n].x-g[0].x == turn || g[0].x-g[n].x == turn)
 }

@@ -173,13 +173,9 @@ func TestToShapeRealPlane(t *testing.T) {
 	if na < 12 || na != nb {
 		t.Errorf("square has %d and %d positions", na, nb)
 	}
-	// around the pole
 	pole, err := spatial.NewProjection(spatial.CRS{Method: "LAEA", Ellipsoid: "WGS 84", Lat0: 90})
 	if err != nil {
 		t.Fatal(err)
-	}
-	if _, err := spatial.ToShape(spatial.MultiPolygon{{r}}, pole); !errors.Is(err, spatial.ErrUnsupportedGeometry) {
-		t.Errorf("around the pole: %v", err)
 	}
 	// beside the pole, across the meridian opposite the centre
 	beside := spatial.Ring{{-2e5, 3e5}, {2e5, 3e5}, {2e5, 5e5}, {-2e5, 5e5}}
@@ -191,6 +187,36 @@ func TestToShapeRealPlane(t *testing.T) {
 	// outside the domain
 	if _, err := spatial.ToShape(spatial.MultiPolygon{{spatial.Ring{{1e9, 0}, {1.1e9, 0}, {1e9, 1e8}}}}, fiji); !errors.Is(err, spatial.ErrUnsupportedGeometry) {
 		t.Errorf("outside the domain: %v", err)
+	}
+}
+
+// Rings around a pole, with holes around it and beside it, north and south.
+func TestToShapePoles(t *testing.T) {
+	for _, lat := range []float64{90, 82, -90, -85} {
+		for _, lon := range []float64{0, 180, 77} {
+			p, err := spatial.NewProjection(spatial.CRS{Method: "LAEA", Ellipsoid: "WGS 84", Lat0: lat, Lon0: lon})
+			if err != nil {
+				t.Fatal(err)
+			}
+			for k, m := range []mixture{{{1, .2, .1, 1, 1, 0}}, targetRing(), randomMixture(rand.New(rand.NewPCG(8, 8)))} {
+				g := m.grid(-6, 6, 121, 500_000)
+				top := slices.Max(g.Values)
+				s := lines(t, g, []float64{.02 * top, .1 * top, .5 * top}, spatial.IsolineOptions{})
+				for n := range 6 {
+					plane := s.Superlevel(n / 2)
+					if n%2 == 1 {
+						plane = s.Isoband(n/2 + 1)
+					}
+					mp, err := spatial.ToShape(plane, p)
+					if err != nil {
+						t.Fatalf("centre %g %g, mixture %d, shape %d: %v", lat, lon, k, n, err)
+					}
+					judge(t, mp, fmt.Sprint("centre ", lat, lon, " mixture ", k, " shape ", n))
+					// chords of 50 km in degrees against chords on the plane
+					nearly(t, fmt.Sprint("centre ", lat, lon, " mixture ", k, " shape ", n, " area"), spatial.EllipsoidArea(mp), plane.Area(), 2e-4*plane.Area())
+				}
+			}
+		}
 	}
 }
 

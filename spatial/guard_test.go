@@ -370,3 +370,29 @@ func BenchmarkJudge(b *testing.B) {
 		}
 	}
 }
+
+// METHODS.md section 11 item 15: the area read back from the degrees is the
+// area reported, to 1e-6; chords left straight in degrees cost no more.
+func TestGuardAreaReadBack(t *testing.T) {
+	for _, c := range []struct{ unit, tol float64 }{{500, 1e-6}, {5_000, 1e-6}, {50_000, 1e-6}, {250_000, 2e-5}} {
+		for _, crs := range []spatial.CRS{
+			{Method: "LAEA", Ellipsoid: "WGS 84", Lat0: 60, Lon0: 10},
+			{Method: "LAEA", Ellipsoid: "WGS 84", Lat0: -18, Lon0: 179},
+			{Method: "TM", Ellipsoid: "WGS 84", Lat0: 0, Lon0: 9, K0: .9996, FE: 5e5, FN: -5e6},
+		} {
+			p, err := spatial.NewProjection(crs)
+			if err != nil {
+				t.Fatal(err)
+			}
+			s := newStudy(targetRing(), 181, 3000, c.unit, rand.New(rand.NewPCG(2, 2)))
+			for _, g := range release(t, s, 10, p).Regions() {
+				what := fmt.Sprintf("%s, unit %g m, region %g", crs.Method, c.unit, g.Content)
+				judge(t, g.Shape, what)
+				nearly(t, what, spatial.EllipsoidArea(g.Shape)/1e6, g.AreaKM2, c.tol*g.AreaKM2)
+				if !p.EqualArea() { // scale .9996 and growing away from the meridian
+					nearly(t, what+" plane", g.Plane.Area()/1e6, g.AreaKM2, .1*g.AreaKM2)
+				}
+			}
+		}
+	}
+}

@@ -4,6 +4,8 @@ import (
 	"cmp"
 	"math"
 	"slices"
+
+	"github.com/paulmach/orb"
 )
 
 // addRegions builds the released regions in rising content.
@@ -27,7 +29,7 @@ func (r *Release) addRegions(a Analysis, f *family, levels []float64, proj Proje
 			out.EventShare = out.Events.Estimate / a.Events
 		}
 		var err error
-		if out.Shape, err = assemble(o, f.grid, proj); err != nil {
+		if out.Shape, err = f.shape(o, proj); err != nil {
 			return err
 		}
 		if !proj.EqualArea() {
@@ -54,7 +56,7 @@ func (r *Release) addBands(a Analysis, f *family, proj Projection) error {
 		out.Mass, out.Events, _ = f.m.union(in)
 		out.AreaKM2 = f.area(in) / perKM2
 		var err error
-		if out.Shape, err = assemble(o, f.grid, proj); err != nil {
+		if out.Shape, err = f.shape(o, proj); err != nil {
 			return err
 		}
 		if !proj.EqualArea() {
@@ -63,6 +65,31 @@ func (r *Release) addBands(a Analysis, f *family, proj Projection) error {
 		r.bands = append(r.bands, out)
 	}
 	return nil
+}
+
+// smallShape is the number of positions up to which a shape is always judged a
+// second time; larger ones only where the lattice comes near the rounding.
+const smallShape = 4000
+
+// shape assembles an outline. That no two rings meet was checked exactly when
+// they were rounded; the second judge also sees to what lies inside what.
+func (f *family) shape(o outline, proj Projection) (orb.MultiPolygon, error) {
+	mp, err := assemble(o, f.grid, proj)
+	if err != nil {
+		return nil, err
+	}
+	var n int
+	for _, p := range mp {
+		for _, r := range p {
+			n += len(r)
+		}
+	}
+	if fine := f.s.opt.Clamp*min(f.s.g.Step[0], f.s.g.Step[1]) < 0.03; n <= smallShape || fine {
+		if err := checkOGC(mp); err != nil {
+			return nil, err
+		}
+	}
+	return mp, nil
 }
 
 // bordered reports whether any ring of level k is part of the outline.

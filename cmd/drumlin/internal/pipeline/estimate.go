@@ -97,15 +97,16 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 	}
 	margin := marginFor(m.sel, cov, n)
 	level := base
-	for nodesAt(lo, hi, base, level, margin) > target {
+	// Steps are powers of two: take the one whose node count is nearest in ratio.
+	most := int(math.Sqrt2 * float64(target))
+	for nodesAt(lo, hi, base, level, margin) > most {
 		level++
 	}
-	if m.nodes > 0 && level == base && m.canRepeat && nodesAt(lo, hi, base, level-1, margin) <= target {
-		finest := level
-		for nodesAt(lo, hi, base, finest-1, margin) <= target && finest > base-6 {
-			finest--
+	if level == base && m.canRepeat && nodesAt(lo, hi, base, level-1, margin) <= most {
+		for nodesAt(lo, hi, base, level-1, margin) <= most && level > base-8 {
+			level--
 		}
-		return nil, m.again(lo, hi, finest)
+		return nil, m.again(lo, hi, level)
 	}
 	fine := level
 	for {
