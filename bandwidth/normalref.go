@@ -15,7 +15,7 @@ func NormalReference(e Events, shape Shape) (Choice, error) {
 	if err := e.check(); err != nil {
 		return Choice{}, err
 	}
-	d, n := e.dim(), e.Spectrum.EffectiveN()
+	d, n := e.dim(), e.wholeN()
 	h, err := normalScale(e.Covariance, d, n, 4/((float64(d)+2)*n), 2/(float64(d)+4), shape)
 	if err != nil {
 		return Choice{}, err

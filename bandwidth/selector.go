@@ -45,11 +45,12 @@ const (
 	Converged               // a minimum, found from every start
 	Several                 // several local minima; the lowest was taken
 	Stopped                 // the search ended before it converged
+	Border                  // the criterion falls up to the border of the search
 )
 
 // String names the status for people.
 func (s Status) String() string {
-	return [...]string{"closed form", "converged", "several minima, lowest taken", "stopped before convergence"}[s]
+	return [...]string{"closed form", "converged", "several minima, lowest taken", "stopped before convergence", "at the border of the search"}[s]
 }
 
 // Pilot is one stage of a selector.
@@ -78,14 +79,36 @@ type Choice struct {
 // gaussR returns R(K) of the Gaussian kernel, (4 pi)^(-d/2). Source: closed form.
 func gaussR(d int) float64 { return math.Pow(4*math.Pi, -float64(d)/2) }
 
-// Events is what selectors work on: the spectrum and second moments of the
-// binned events.
+// Events is what selectors work on: pair sums and second moments of the events.
 type Events struct {
-	Spectrum   *mv.Spectrum
-	Covariance []float64 // S, row-major, divisor n-1
+	Spectrum   *mv.Spectrum // pair sums by frequencies
+	Direct     *DirectSums  // pair sums by the events, used when Spectrum is nil
+	Covariance []float64    // S, row-major, divisor n-1
+	// Sample holds events for likelihood cross-validation, which is no pair sum;
+	// nil where it is not asked for. It may be a sub-sample.
+	Sample *mv.Sample
+	// Counts are the node weights behind the spectrum; with them the mixture
+	// pilot of Auto is fitted. No values: it is left out.
+	Counts mv.Grid
+	// WholeN is the effective size of all events where Direct is a sub-sample; 0
+	// otherwise.
+	WholeN float64
+
+	workers int
 }
 
-func (e Events) dim() int { return e.Spectrum.Dim() }
+// Sums returns the pair sums.
+func (e Events) Sums() Sums {
+	if e.Spectrum != nil {
+		return e.Spectrum
+	}
+	return e.Direct
+}
+
+func (e Events) dim() int { return e.Sums().Dim() }
+
+// n returns the effective size of the events that the pair sums rest on.
+func (e Events) n() float64 { return e.Sums().EffectiveN() }
 
 // scale returns sqrt(tr S / d), the common scale by which every selector
 // divides the data, so that its result does not depend on their unit or, in
@@ -101,8 +124,11 @@ func (e Events) scale() float64 {
 
 // check refuses events without spread.
 func (e Events) check() error {
+	if e.Spectrum == nil && e.Direct == nil {
+		return fmt.Errorf("bandwidth: no events: %w", mv.ErrDegenerate)
+	}
 	d := e.dim()
-	n := e.Spectrum.EffectiveN()
+	n := e.n()
 	if n < float64(d+1) {
 		return fmt.Errorf("bandwidth: %g events (effective) in %d dimensions, at least %d are needed: %w", n, d, d+1, mv.ErrDegenerate)
 	}

@@ -152,7 +152,7 @@ func TestTreeConforms(t *testing.T) {
 func TestTreeAwkwardSets(t *testing.T) {
 	geometric := make([]float64, 2000)
 	for i := range geometric {
-		geometric[i] = math.Ldexp(1, i%1000)
+		geometric[i] = math.Ldexp(float64(1-i%2*2), i/2)
 	}
 	var gx, gy []float64
 	for i := range 900 {

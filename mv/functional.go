@@ -16,14 +16,26 @@ import (
 //
 // Source: Parseval's identity; Wand and Jones 1995, section 3.5, for psi.
 func (s *Spectrum) Functional(r int, g BandwidthMatrix) []float64 {
+	return s.Functionals(g, r)[0]
+}
+
+// Functionals returns the functionals of several even orders at one matrix in
+// a single pass: the exponentials are shared. Otherwise as Functional.
+func (s *Spectrum) Functionals(g BandwidthMatrix, orders ...int) [][]float64 {
 	d := s.Dim()
-	if g.Dim() != d || r < 0 || r%2 != 0 {
-		panic(fmt.Sprintf("mv: functional: order %d and matrix of dimension %d for a spectrum of dimension %d", r, g.Dim(), d))
+	top, size := 0, 0
+	index := make([][][]int, len(orders))
+	for o, r := range orders {
+		if g.Dim() != d || r < 0 || r%2 != 0 {
+			panic(fmt.Sprintf("mv: functional: order %d and matrix of dimension %d for a spectrum of dimension %d", r, g.Dim(), d))
+		}
+		top = max(top, r)
+		index[o] = MultiIndices(d, r)
+		size += len(index[o])
 	}
-	index := MultiIndices(d, r)
 	m := g.Entries()
 	rows := s.half.Rows()
-	part := make([]float64, rows*len(index))
+	part := make([]float64, rows*size)
 	width := s.half.Width()
 	s.eachRow(func(row int, rest []int) {
 		a, b, c := s.line(m, rest)
@@ -32,42 +44,81 @@ func (s *Spectrum) Functional(r int, g BandwidthMatrix) []float64 {
 			return
 		}
 		// Moments of t0 along the line, then the monomials of the other axes.
-		moment := make([]float64, r+1)
-		power := s.power[row*width : (row+1)*width]
-		for i := from; i < to; i++ {
-			t := s.freq[0][i]
-			v := power[i] * math.Exp(-0.5*((a*t+2*b)*t+c))
-			for q := range moment {
-				moment[q] += v
-				v *= t
-			}
+		var room [16]float64
+		moment := room[:min(top+1, len(room))]
+		if top+1 > len(room) {
+			moment = make([]float64, top+1)
 		}
-		out := part[row*len(index) : (row+1)*len(index)]
-		for j, k := range index {
-			v := moment[k[0]]
-			for axis, bin := range rest {
-				for range k[axis+1] {
-					v *= s.freq[axis+1][bin]
+		lineMoments(moment, s.power[row*width+from:row*width+to], s.freq[0][from:to], a, b, c)
+		out := part[row*size : (row+1)*size]
+		for _, ks := range index {
+			for j, k := range ks {
+				v := moment[k[0]]
+				for axis, bin := range rest {
+					for range k[axis+1] {
+						v *= s.freq[axis+1][bin]
+					}
 				}
+				out[j] = v
 			}
-			out[j] = v
+			out = out[len(ks):]
 		}
 	})
-	sum := make([]float64, len(index))
+	sum := make([]float64, size)
 	for row := range rows {
 		for j := range sum {
-			sum[j] += part[row*len(index)+j]
+			sum[j] += part[row*size+j]
 		}
 	}
 	scale := 1.0
 	for k := range d {
 		scale /= float64(s.pad[k]) * s.lat.Step[k]
 	}
-	if r%4 == 2 {
-		scale = -scale // i^r
+	out := make([][]float64, len(orders))
+	for o, r := range orders {
+		sign := scale
+		if r%4 == 2 {
+			sign = -scale // i^r
+		}
+		out[o] = sum[:len(index[o]):len(index[o])]
+		for j := range out[o] {
+			out[o][j] *= sign
+		}
+		sum = sum[len(index[o]):]
 	}
-	for j := range sum {
-		sum[j] *= scale
+	return out
+}
+
+// lineMoments adds sum_i power_i exp(-(a t_i^2 + 2 b t_i + c)/2) t_i^q to
+// moment[q].
+func lineMoments(moment, power, freq []float64, a, b, c float64) {
+	freq = freq[:len(power)]
+	switch len(moment) {
+	case 1:
+		var m0 float64
+		for i, t := range freq {
+			m0 += power[i] * math.Exp(-0.5*((a*t+2*b)*t+c))
+		}
+		moment[0] += m0
+	case 3:
+		var m0, m1, m2 float64
+		for i, t := range freq {
+			v := power[i] * math.Exp(-0.5*((a*t+2*b)*t+c))
+			w := v * t
+			m0 += v
+			m1 += w
+			m2 += w * t
+		}
+		moment[0] += m0
+		moment[1] += m1
+		moment[2] += m2
+	default:
+		for i, t := range freq {
+			v := power[i] * math.Exp(-0.5*((a*t+2*b)*t+c))
+			for q := range moment {
+				moment[q] += v
+				v *= t
+			}
+		}
 	}
-	return sum
 }

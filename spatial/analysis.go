@@ -8,8 +8,14 @@ type Analysis struct {
 	Density mv.Grid // probability per square metre, integrates to 1
 	Counts  mv.Grid // events per node: the tally's linear binning weights of the unweighted count
 	Weights mv.Grid // the same for weights; no values when the run has none
-	Events  float64 // events mapped, n
-	Total   float64 // their total weight; Events when the run has no weights
+	// FineCounts, when it has values, are the same events binned on a refinement
+	// of the lattice (r - 1 more nodes in every gap, r up to 64). The guard's
+	// bounds are then read from it: they tighten with r, and a band narrower
+	// than two steps of Counts can hold no event for certain.
+	FineCounts mv.Grid
+
+	Events float64 // events mapped, n
+	Total  float64 // their total weight; Events when the run has no weights
 
 	KernelAtZero float64 // K_H(0), per square metre
 

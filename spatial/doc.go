@@ -40,4 +40,16 @@
 // with an accuracy of a few nanometers", Journal of Geodesy 85 (2011); Karney,
 // "On auxiliary latitudes" (2022). Checked against PROJ and the IOGP GIGS test
 // series; see testdata.
+//
+// # Level sets and the guard
+//
+// NewIsolines draws all level curves of a lattice function at once: O(nodes)
+// with one byte a node, then O(vertices). Curves never meet, at one level or
+// two, and nest as a forest of faces. Each face knows its area, its mass (the
+// bilinear interpolant, exactly) and its events with bounds read from the count
+// nodes. Guard dissolves faces that do not certainly hold enough events, builds
+// regions and bands from what is left, and is the only maker of a Release.
+// ToShape rounds to 1e-7 degree, cuts at the antimeridian and goes over poles;
+// that no two rings meet is checked in whole numbers. Sources: the asymptotic
+// decider, Nielson and Hamann 1991 (from memory); RFC 7946; OGC 06-103r4.
 package spatial

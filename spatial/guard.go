@@ -25,8 +25,13 @@ const perKM2 = 1e6
 // joins the next lower band, a hole what surrounds it. So every part, hole and
 // ring-shaped difference between nested releases of one family holds at least
 // MinEvents events. Regions and bands are then built from the faces that are
-// left. A region of whose own border nothing is left is withheld whole, for it
-// would show another region under its name.
+// left. A region that no longer holds anything that the next smaller one does
+// not is withheld whole, for it would show that one under another name.
+//
+// What is certain depends on the step of the counts: a node counts only when
+// all its cells lie in the face, so in a face narrower than two steps nothing
+// is certain and it joins its surroundings, however many events it may hold.
+// Analysis.FineCounts sharpens this.
 //
 // A peak needs Events·density/KernelAtZero >= MinEvents and a place inside a
 // released region or band. The surface is 0 outside the released bands; a node
@@ -151,6 +156,11 @@ func drawFamily(a Analysis, levels []float64, p Policy, proj Projection) (*famil
 		m, err := s.measure(a.Counts, a.Weights)
 		if err != nil {
 			return nil, err
+		}
+		if len(a.FineCounts.Values) > 0 {
+			if err := m.boundFine(s, a.FineCounts); err != nil {
+				return nil, err
+			}
 		}
 		f := &family{s: s, m: m, d: s.dissolve(m, p.MinEvents), grid: make([]gridRing, len(s.rings))}
 		for k := range levels {

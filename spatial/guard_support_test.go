@@ -19,7 +19,7 @@ type study struct {
 // per unit of the mixture.
 func newStudy(m mixture, nodes, n int, unit float64, r *rand.Rand) study {
 	g := m.grid(-7, 7, nodes, unit)
-	s := study{Analysis: spatial.Analysis{Density: g, Counts: mv.NewGrid(g.Lattice), RegionRule: "events", KernelAtZero: slices.Max(g.Values) / 4}}
+	s := study{Analysis: spatial.Analysis{Density: g, RegionRule: "events", KernelAtZero: slices.Max(g.Values) / 4}}
 	var heights []float64
 	for len(s.events) < n {
 		x, y := m.draw(r)
@@ -30,13 +30,8 @@ func newStudy(m mixture, nodes, n int, unit float64, r *rand.Rand) study {
 		}
 		s.events = append(s.events, spatial.XY{X: x * unit, Y: y * unit})
 		heights = append(heights, m.at(x, y)/unit/unit)
-		u, v = u-float64(i), v-float64(j)
-		c := s.Counts.Values[j*nodes+i:]
-		c[0] += (1 - u) * (1 - v)
-		c[1] += u * (1 - v)
-		c[nodes] += (1 - u) * v
-		c[nodes+1] += u * v
 	}
+	s.Counts = s.binned(1)
 	s.Events, s.Total = float64(n), float64(n)
 	slices.Sort(heights)
 	for _, p := range []float64{.5, .75, .95} {
@@ -50,6 +45,24 @@ func newStudy(m mixture, nodes, n int, unit float64, r *rand.Rand) study {
 		s.Peaks = append(s.Peaks, spatial.Summit{At: spatial.XY{X: q.X, Y: q.Y}, Density: q.Value, StandardError: q.Value / 10, SmoothingBias: -q.Value / 20})
 	}
 	return s
+}
+
+// binned bins the events linearly on the lattice made r times finer.
+func (s study) binned(r int) mv.Grid {
+	l := s.Density.Lattice
+	nx, ny := (l.N[0]-1)*r+1, (l.N[1]-1)*r+1
+	g := mv.NewGrid(mv.Lattice{Origin: l.Origin, Step: []float64{l.Step[0] / float64(r), l.Step[1] / float64(r)}, N: []int{nx, ny}})
+	for _, e := range s.events {
+		u, v := (e.X-g.Origin[0])/g.Step[0], (e.Y-g.Origin[1])/g.Step[1]
+		i, j := int(u), int(v)
+		u, v = u-float64(i), v-float64(j)
+		c := g.Values[j*nx+i:]
+		c[0] += (1 - u) * (1 - v)
+		c[1] += u * (1 - v)
+		c[nx] += (1 - u) * v
+		c[nx+1] += u * v
+	}
+	return g
 }
 
 // inside counts the events in a shape.

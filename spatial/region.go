@@ -15,7 +15,7 @@ func (r *Release) addRegions(a Analysis, f *family, levels []float64, proj Proje
 	for _, t := range rising {
 		k, _ := slices.BinarySearch(levels, t.Density)
 		o := f.atOr[k]
-		if !f.bordered(o, k) {
+		if !f.adds(k) {
 			r.withheld.Regions = append(r.withheld.Regions, t.Content)
 			continue
 		}
@@ -92,17 +92,9 @@ func (f *family) shape(o outline, proj Projection) (orb.MultiPolygon, error) {
 	return mp, nil
 }
 
-// bordered reports whether any ring of level k is part of the outline.
-func (f *family) bordered(o outline, k int) bool {
-	for _, rings := range o {
-		for _, id := range rings {
-			if int(f.s.rings[id].level) == k {
-				return true
-			}
-		}
-	}
-	return false
-}
+// adds reports whether any face has just the label above level k, so that the
+// region there holds more than the next smaller one.
+func (f *family) adds(k int) bool { return slices.Contains(f.d.label, uint8(k+1)) }
 
 // area adds up the faces of a set, square metres.
 func (f *family) area(in func(face int32) bool) float64 {

@@ -9,7 +9,7 @@ import (
 func ExampleTarget() {
 	m := mvtest.Target("RING")
 	fmt.Printf("%d parts; f at the hole %.4f, on the ring %.4f\n", m.Len(), m.Density([]float64{0, 0}), m.Density([]float64{2, 0}))
-	// Output: 12 parts; f at the hole 0.0000, on the ring 0.1273
+	// Output: 12 parts; f at the hole 0.0000, on the ring 0.0887
 }
 
 func ExampleP12() {

@@ -12,12 +12,15 @@ import (
 	"os/signal"
 	"runtime"
 	"runtime/debug"
+	"slices"
+	"strconv"
 	"strings"
 	"syscall"
 
 	"github.com/spf13/cobra"
 	"golang.org/x/term"
 
+	"drumlin/cmd/drumlin/internal/config"
 	"drumlin/cmd/drumlin/internal/progress"
 )
 
@@ -54,11 +57,21 @@ func Main(args []string, stdout, stderr io.Writer) (status int) {
 		return exitDone
 	}
 	status = exitStatus(err)
+	app.json = app.json || wantsJSON(args)
 	if ctx.Err() != nil {
 		status, err = exitInterrupted, errors.New("interrupted; nothing half-written is left")
 	}
 	app.complain(err, status)
 	return status
+}
+
+// wantsJSON looks for --json where the settings could not be read: a complaint
+// about the command line or the settings file is a JSON line too.
+func wantsJSON(args []string) bool {
+	if on, err := strconv.ParseBool(os.Getenv(config.EnvPrefix + "_JSON")); err == nil && on {
+		return true
+	}
+	return slices.Contains(args, "--json") || slices.Contains(args, "--json=true")
 }
 
 // app carries what commands share.

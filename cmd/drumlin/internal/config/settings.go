@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"strconv"
 	"strings"
 )
@@ -49,7 +50,7 @@ func (s *Settings) Nodes() int {
 
 // BandCount returns how many isobands are wanted, 0 when levels are given.
 func (s *Settings) BandCount() int {
-	if len(s.Bands) == 1 && s.Bands[0] == math.Trunc(s.Bands[0]) && s.Bands[0] >= 1 {
+	if len(s.Bands) == 1 && s.Bands[0] == math.Trunc(s.Bands[0]) && s.Bands[0] >= 1 && s.Bands[0] <= math.MaxInt32 {
 		return int(s.Bands[0])
 	}
 	return 0
@@ -91,7 +92,9 @@ func (s *Settings) Validate() error {
 	if n := len(s.Matrix); n != 0 && n != 3 {
 		bad("matrix has %d numbers; give h11,h12,h22 in square metres", n)
 	}
-	if len(s.Matrix) == 3 && !(s.Matrix[0] > 0 && s.Matrix[2] > 0 && s.Matrix[0]*s.Matrix[2] > s.Matrix[1]*s.Matrix[1]) {
+	if slices.ContainsFunc(s.Matrix, func(v float64) bool { return math.IsInf(v, 0) }) {
+		bad("matrix %v is not finite; give h11,h12,h22 in square metres", s.Matrix)
+	} else if len(s.Matrix) == 3 && !(s.Matrix[0] > 0 && s.Matrix[2] > 0 && s.Matrix[0]*s.Matrix[2] > s.Matrix[1]*s.Matrix[1]) {
 		bad("matrix %v is not positive definite; needs h11 > 0, h22 > 0 and h11*h22 > h12*h12", s.Matrix)
 	}
 	if s.Scale < 0 || math.IsNaN(s.Scale) || math.IsInf(s.Scale, 0) {

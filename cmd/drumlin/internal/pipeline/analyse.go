@@ -24,7 +24,7 @@ const (
 // analyse puts the estimate into the form that the guard takes.
 func analyse(e *Estimate, s *config.Settings) (spatial.Analysis, []string, error) {
 	a := spatial.Analysis{
-		Density: e.Density, Counts: e.Counts, Weights: e.Weights,
+		Density: e.Density, Counts: e.Counts, Weights: e.Weights, FineCounts: e.FineCounts,
 		Events: e.Events, Total: e.Total,
 		KernelAtZero: e.KernelAtZero(), RegionRule: s.RegionRule,
 	}

@@ -74,8 +74,9 @@ func (w *pool) each(ctx context.Context, sources []events.Source, columns []stri
 	return first
 }
 
-// countCentre is the first pass over coordinates that finds the centre.
-func (r *reading) countCentre(ctx context.Context, sources []events.Source, w *pool) (*spatial.CentreCounter, error) {
+// countCentre is the first pass over coordinates that finds the centre; the
+// account says what became of the rows.
+func (r *reading) countCentre(ctx context.Context, sources []events.Source, w *pool) (*spatial.CentreCounter, events.Account, error) {
 	w.report.Stage("finding the centre")
 	counters := make([]spatial.CentreCounter, max(1, w.workers))
 	accounts := make([]events.Account, len(counters))
@@ -91,12 +92,13 @@ func (r *reading) countCentre(ctx context.Context, sources []events.Source, w *p
 		return nil
 	})
 	if err != nil {
-		return nil, err
+		return nil, events.Account{}, err
 	}
 	for i := range counters[1:] {
 		counters[0].Merge(&counters[i+1])
+		accounts[0].Add(accounts[i+1])
 	}
-	return &counters[0], nil
+	return &counters[0], accounts[0], nil
 }
 
 // tallied is the outcome of a pass over the events.

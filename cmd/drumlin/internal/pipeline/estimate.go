@@ -17,6 +17,8 @@ const (
 	marginScales = 4.0  // the lattice goes on this many scales beyond the events
 	kernelReach  = 7.0  // a Gaussian is zero, for double precision, beyond this many scales
 	wantedError  = 3e-5 // of the density's maximum, from binning
+	countRefine  = 2    // doublings by which events are counted finer than the lattice
+	cheapEvents  = 2e6  // up to here another pass over the events costs little
 )
 
 // Selection says how the bandwidth matrix is found.
@@ -44,6 +46,7 @@ type Estimate struct {
 	Bias          mv.Grid          // leading smoothing bias
 	Counts        mv.Grid          // events at the nodes
 	Weights       mv.Grid          // weights at the nodes, no values without weights
+	FineCounts    mv.Grid          // the same events up to countRefine doublings finer, for tight bounds of counts
 	Events        float64
 	Total         float64 // weight
 	EffectiveN    float64
@@ -102,12 +105,13 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 	for nodesAt(lo, hi, base, level, margin) > most {
 		level++
 	}
-	if level == base && m.canRepeat && nodesAt(lo, hi, base, level-1, margin) <= most {
-		for nodesAt(lo, hi, base, level-1, margin) <= most && level > base-8 {
-			level--
-		}
-		return nil, m.again(lo, hi, level)
+	for level > base-8 && nodesAt(lo, hi, base, level-1, margin) <= most {
+		level--
 	}
+	if base > level-countRefine && m.cheapRepeat() {
+		return nil, m.again(lo, hi, level-countRefine)
+	}
+	level = max(level, base)
 	fine := level
 	for {
 		if err := ctx.Err(); err != nil {
@@ -125,7 +129,7 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 				continue
 			}
 			if m.canRepeat {
-				return nil, m.again(lo, hi, level-2)
+				return nil, m.again(lo, hi, level-1-countRefine)
 			}
 		}
 		if want := wantedLevel(e, level); want < fine {
@@ -136,8 +140,13 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 			case fine > base && !m.canRepeat:
 				fine = base
 				continue
-			case m.canRepeat:
-				return nil, m.again(lo, hi, want)
+			case m.cheapRepeat():
+				return nil, m.again(lo, hi, min(want, level-countRefine))
+			}
+		}
+		if fine := max(base, level-countRefine); fine < level {
+			if e.FineCounts, err = m.gridAligned(lo, hi, base, fine, level, margin, false); err != nil {
+				return nil, err
 			}
 		}
 		if err := m.floor(e); err != nil {
@@ -152,6 +161,12 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 		e.Bias = spectrum.SmoothingBias(e.Choice.Matrix, e.BiasPilot.Matrix)
 		return e, nil
 	}
+}
+
+// cheapRepeat reports whether another pass is worth while for a finer lattice
+// that nothing but its look or the last digits would need.
+func (m *estimator) cheapRepeat() bool {
+	return m.canRepeat && (m.nodes > 0 || m.tally.Events() <= cheapEvents)
 }
 
 // again asks for a finer tally around the events.

@@ -142,7 +142,7 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 			return err
 		}
 		r.warnings = append(r.warnings, warnings...)
-		release, err = spatial.Guard(analysis, spatial.Policy{MinEvents: r.settings.MinEvents}, in.plane)
+		release, err = spatial.Guard(analysis, spatial.Policy{MinEvents: r.settings.MinEvents, Workers: r.workers}, in.plane)
 		return err
 	})
 	if err != nil {

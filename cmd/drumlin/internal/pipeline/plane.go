@@ -167,13 +167,13 @@ func (r *reading) centre(ctx context.Context, sources []events.Source, w *pool) 
 			}
 		}
 	}
-	counter, err := r.countCentre(ctx, sources, w)
+	counter, account, err := r.countCentre(ctx, sources, w)
 	if err != nil {
 		return spatial.LonLat{}, err
 	}
 	c, ok := counter.Centre()
 	if !ok {
-		return c, ErrNoEvents
+		return c, fmt.Errorf("%w: %s", ErrNoEvents, reasonsText(account))
 	}
 	return c, nil
 }

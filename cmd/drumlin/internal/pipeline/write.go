@@ -173,7 +173,7 @@ func guardRecord(rel *spatial.Release) record.Guard {
 		BandParts: w.BandParts, BandHoles: w.BandHoles, Peaks: w.Peaks, RegionsWithheld: w.Regions,
 	}
 	if b := rel.Bands(); len(b) > 0 {
-		g.FloorPerKM2 = b[0].FromPerKM2
+		g.FloorPerKM2 = roundTo(b[0].FromPerKM2, 9)
 	}
 	return g
 }
