@@ -26,20 +26,20 @@ func Hessian(e Events) (Choice, error) {
 	if err := e.check(); err != nil {
 		return Choice{}, err
 	}
-	d, n, unit := e.dim(), e.Spectrum.EffectiveN(), e.scale()
-	s := make([]float64, d*d)
-	for i, v := range e.Covariance {
-		s[i] = v / (unit * unit)
-	}
-	psi, pilots, notes, err := chain(e, s, unit, WidestOrder, 8)
-	if err != nil {
-		return Choice{}, fmt.Errorf("bandwidth: hessian pilot: %w", err)
-	}
-	start, err := HessianPilot(s, d, n)
+	f, err := newFrame(CommonScale, e)
 	if err != nil {
 		return Choice{}, err
 	}
-	psi4 := laplacianTwice(d, psi)
+	d, n := e.dim(), e.n()
+	ch, err := runChain(e, f, WidestOrder, 8, false)
+	if err != nil {
+		return Choice{}, fmt.Errorf("bandwidth: hessian pilot: %w", err)
+	}
+	start, err := HessianPilot(f.s, d, n)
+	if err != nil {
+		return Choice{}, err
+	}
+	psi4 := laplacianTwice(d, ch.psi)
 	order4, order6 := mv.MultiIndices(d, 4), positions(d, 6)
 	found, err := minimise(func(g mv.BandwidthMatrix) (float64, []float64) {
 		_, grad := amise(g, psi4, n)
@@ -71,8 +71,8 @@ func Hessian(e Events) (Choice, error) {
 	if err != nil {
 		return Choice{}, fmt.Errorf("bandwidth: hessian pilot: %w", err)
 	}
-	c := Choice{Method: "plug-in for second derivatives", Shape: Full, Stages: 2, Pilots: pilots, Notes: notes, Criterion: found.value, Status: found.status, Evaluations: found.evaluations}
-	c.Matrix, err = found.matrix.Scaled(unit * unit)
+	c := Choice{Method: "plug-in for second derivatives", Shape: Full, Stages: 2, Pilots: ch.pilots, Notes: ch.notes, Criterion: found.value, Status: found.status, Evaluations: found.evaluations}
+	c.Matrix, err = f.toData(found.matrix)
 	return c, err
 }
 
@@ -110,7 +110,7 @@ func laplacianTwice(d int, psi8 []float64) []float64 {
 		}
 		contracted = append(contracted, sum)
 	}
-	return tensor4(d, contracted)
+	return newTensor(d, 4).spread(contracted)
 }
 
 // positions maps the multi-indices of an order to their places.

@@ -160,3 +160,35 @@ func dot(a, b []float64) float64 {
 	}
 	return s
 }
+
+// scalarPilot returns the multiple g^2 I that minimises the squared norm of the
+// same bias vector,
+//
+//	g^(d+r+2) = 4(r+d) A1 / (n [-(d+r-2) A2 + sqrt((d+r-2)^2 A2^2 + 8(d+r) A1 A3)]),
+//
+// A1 = sum K_k^2, A2 = sum K_k P_k, A3 = sum P_k^2 over |k| = r, every k with
+// its multiplicity, K_k = D^k phi_I(0), P_k = sum_i psi_(k+2ei). Source: Duong
+// and Hazelton 2003, in this form with multiplicities.
+func scalarPilot(r, d int, n float64, psi []float64) (mv.BandwidthMatrix, error) {
+	id, err := mv.ScalarBandwidth(d, 1)
+	if err != nil {
+		return id, err
+	}
+	kernel, pos := mv.NormalDerivativesAtZero(id, r), positions(d, r+2)
+	var a1, a2, a3 float64
+	for q, k := range mv.MultiIndices(d, r) {
+		var p float64
+		for i := range d {
+			up := append([]int(nil), k...)
+			up[i] += 2
+			p += psi[pos[key(up)]]
+		}
+		m := mv.Multiplicity(k)
+		a1 += m * kernel[q] * kernel[q]
+		a2 += m * kernel[q] * p
+		a3 += m * p * p
+	}
+	w := float64(d+r-2) * a2
+	g := math.Pow(float64(4*(r+d))*a1/(n*(-w+math.Sqrt(w*w+8*float64(d+r)*a1*a3))), 1/float64(d+r+2))
+	return mv.ScalarBandwidth(d, g)
+}

@@ -1,6 +1,7 @@
 package bandwidth
 
 import (
+	"errors"
 	"fmt"
 	"math"
 
@@ -29,95 +30,161 @@ const DefaultStages = 3
 // Sources: Wand and Jones 1995, section 4.6; Duong and Hazelton 2003; Chacon
 // and Duong 2010.
 func PlugIn(e Events, shape Shape, stages int) (Choice, error) {
-	if err := e.check(); err != nil {
-		return Choice{}, err
-	}
-	if stages == 0 {
-		stages = DefaultStages
-	}
-	if stages < 1 || stages > 6 {
-		return Choice{}, fmt.Errorf("bandwidth: plug-in with %d stages; 1 to 6 are possible", stages)
-	}
-	d, n, unit := e.dim(), e.Spectrum.EffectiveN(), e.scale()
-	s := make([]float64, d*d) // covariance in common-scale units
-	for i, v := range e.Covariance {
-		s[i] = v / (unit * unit)
-	}
-	c := Choice{Method: "plug-in", Shape: shape, Stages: stages}
+	return PlugInBy(e, Options{Shape: shape, Stages: stages})
+}
 
-	psi, pilots, notes, err := chain(e, s, unit, 2*stages+2, 4)
+// Options of the selectors; the zero value is the default.
+type Options struct {
+	Shape  Shape
+	Stages int   // pilot stages of plug-in and smoothed cross-validation, 1 to 6; default DefaultStages
+	Frame  Frame // coordinates of the pilots and of the search
+	// ScalarPilots keeps every pilot a multiple of the identity in the frame:
+	// Duong and Hazelton 2003, every component with its multiplicity.
+	ScalarPilots bool
+	// Form of biased cross-validation, 1 or 2; default 2, whose minimum exists
+	// more often.
+	Form int
+}
+
+func (o Options) check() error {
+	if o.Stages < 0 || o.Stages > 6 {
+		return fmt.Errorf("bandwidth: plug-in with %d stages; 1 to 6 are possible", o.Stages)
+	}
+	if o.Shape != Full && o.Frame == Sphered {
+		return fmt.Errorf("bandwidth: a %s matrix in sphered coordinates is not %s in those of the data; use the common scale", o.Shape, o.Shape)
+	}
+	if o.Form < 0 || o.Form > 2 {
+		return fmt.Errorf("bandwidth: form %d of biased cross-validation; there are 1 and 2", o.Form)
+	}
+	return nil
+}
+
+func (o Options) stages() int {
+	if o.Stages == 0 {
+		return DefaultStages
+	}
+	return o.Stages
+}
+
+// PlugInBy is PlugIn with all options.
+func PlugInBy(e Events, opt Options) (Choice, error) {
+	c, _, err := plugIn(e, opt)
+	return c, err
+}
+
+// plugIn also returns the functionals of order 4 in the frame.
+func plugIn(e Events, opt Options) (Choice, *frame, error) {
+	if err := errors.Join(e.check(), opt.check()); err != nil {
+		return Choice{}, nil, err
+	}
+	f, err := newFrame(opt.Frame, e)
 	if err != nil {
-		return Choice{}, fmt.Errorf("bandwidth: plug-in: %w", err)
+		return Choice{}, nil, err
 	}
-	c.Pilots, c.Notes = pilots, notes
+	ch, err := runChain(e, f, 2*opt.stages()+2, 4, opt.ScalarPilots)
+	if err != nil {
+		return Choice{}, nil, fmt.Errorf("bandwidth: plug-in: %w", err)
+	}
+	c, err := minimiseAMISE(e, f, ch.psi, opt.Shape)
+	if err != nil {
+		return Choice{}, nil, fmt.Errorf("bandwidth: plug-in: %w", err)
+	}
+	c.Method, c.Stages, c.Pilots = "plug-in", opt.stages(), ch.pilots
+	c.Notes = append(c.Notes, ch.notes...)
+	return c, f, nil
+}
 
-	psi4 := tensor4(d, psi)
-	start, err := normalScale(s, d, n, 4/((float64(d)+2)*n), 2/(float64(d)+4), Full)
+// minimiseAMISE minimises the estimated AMISE for functionals of order 4 in a
+// frame, and returns the matrix in the units of the data.
+func minimiseAMISE(e Events, f *frame, psi []float64, shape Shape) (Choice, error) {
+	d, n := e.dim(), e.n()
+	psi4 := newTensor(d, 4).spread(psi)
+	start, err := normalScale(f.s, d, n, 4/((float64(d)+2)*n), 2/(float64(d)+4), Full)
 	if err != nil {
 		return Choice{}, err
 	}
 	found, err := minimise(func(h mv.BandwidthMatrix) (float64, []float64) { return amise(h, psi4, n) }, start, shape)
 	if err != nil {
-		return Choice{}, fmt.Errorf("bandwidth: plug-in: %w", err)
+		return Choice{}, err
 	}
-	if c.Matrix, err = found.matrix.Scaled(unit * unit); err != nil {
-		return Choice{}, fmt.Errorf("bandwidth: plug-in: %w", err)
+	c := Choice{Shape: shape, Criterion: found.value / f.det, Status: found.status, Evaluations: found.evaluations}
+	h, err := f.toData(found.matrix)
+	if err != nil {
+		return Choice{}, err
 	}
-	per := math.Pow(unit, -float64(d)) // the criterion has the unit of a density
-	c.Criterion = found.value * per
-	c.Variance = gaussR(d) / (n * c.Matrix.SqrtDet())
+	c.Variance = gaussR(d) / (n * h.SqrtDet())
 	c.Bias2 = c.Criterion - c.Variance
-	c.Status, c.Evaluations = found.status, found.evaluations
+	return c.finish(e, h)
+}
+
+// finish sets the matrix, carried from a sub-sample to all events.
+func (c Choice) finish(e Events, h mv.BandwidthMatrix) (Choice, error) {
+	c.Matrix = h
+	if e.WholeN > 0 && e.WholeN > e.n() {
+		d := float64(e.dim())
+		k := math.Pow(e.n()/e.WholeN, 2/(d+4))
+		c.Matrix = multiple(h, k)
+		c.Notes = append(c.Notes, fmt.Sprintf("chosen on a sub-sample of %.0f of %.0f events and multiplied by %.4g", e.n(), e.WholeN, k))
+	}
 	return c, nil
 }
 
-// chain estimates the functionals of order bottom from those of the normal
-// with covariance s, down from order top: a pilot for order top by the normal
-// scale rule, its functionals, from them the next pilot, and so on in steps of
-// two. s and the functionals returned are in units of the common scale unit,
-// the pilots in those of the data.
-func chain(e Events, s []float64, unit float64, top, bottom int) (psi []float64, pilots []Pilot, notes []string, err error) {
-	d, n := e.dim(), e.Spectrum.EffectiveN()
-	free := e.Spectrum.Free()
-	for r := top; r >= bottom; r -= 2 {
-		g, err := NormalScalePilot(s, d, n, r)
-		if err == nil && r < top {
-			g, err = pilotFor(r, n, psi, g)
-		}
-		if err != nil {
-			return nil, nil, nil, fmt.Errorf("pilot of order %d: %w", r, err)
-		}
-		real, err := g.Scaled(unit * unit)
-		if err != nil {
-			return nil, nil, nil, fmt.Errorf("pilot of order %d: %w", r, err)
-		}
-		for k := range d {
-			if need := 7 * math.Sqrt(real.At(k, k)); need > 1.01*free[k] {
-				notes = append(notes, fmt.Sprintf("the pilot of order %d reaches %.4g on axis %d, the transform is free of wrap-around for %.4g", r, need, k+1, free[k]))
-			}
-		}
-		psi = e.Spectrum.Functional(r, real)
-		pilots = append(pilots, Pilot{Order: r, Matrix: real, Psi: append([]float64(nil), psi...)})
-		for i := range psi {
-			psi[i] *= math.Pow(unit, float64(d+r))
-		}
-	}
-	return psi, pilots, notes, nil
+// chained is the outcome of a chain of pilots.
+type chained struct {
+	psi    []float64 // functionals of the lowest order, in the frame
+	pilots []Pilot   // in the units of the data
+	notes  []string
 }
 
-// tensor4 spreads the functionals of order 4 over all (i, j, k, l).
-func tensor4(d int, psi []float64) []float64 {
-	pos := positions(d, 4)
-	out := make([]float64, d*d*d*d)
-	for at := range out {
-		k := make([]int, d)
-		for r, i := at, 0; i < 4; i++ {
-			k[r%d]++
-			r /= d
+// runChain estimates the functionals of order bottom from those of the normal
+// with the events' covariance, down from order top: a pilot for order top by
+// the normal scale rule, the functionals there, a pilot for order top-2 from
+// them, and so on in steps of two.
+func runChain(e Events, f *frame, top, bottom int, scalar bool) (*chained, error) {
+	d, n := e.dim(), e.n()
+	out := &chained{}
+	for r := top; r >= bottom; r -= 2 {
+		g, err := NormalScalePilot(f.s, d, n, r)
+		switch {
+		case err != nil:
+		case scalar && r == top:
+			var twice mv.BandwidthMatrix
+			if twice, err = mv.NewBandwidthMatrix(d, f.s); err == nil {
+				g, err = scalarPilot(r, d, n, mv.NormalDerivativesAtZero(multiple(twice, 2), r+2))
+			}
+		case scalar:
+			g, err = scalarPilot(r, d, n, out.psi)
+		case r < top:
+			g, err = pilotFor(r, n, out.psi, g)
 		}
-		out[at] = psi[pos[key(k)]]
+		if err == nil {
+			err = out.step(e, f, r, g)
+		}
+		if err != nil {
+			return nil, fmt.Errorf("pilot of order %d: %w", r, err)
+		}
 	}
-	return out
+	return out, nil
+}
+
+// step estimates the functionals of order r with pilot g of the frame.
+func (c *chained) step(e Events, f *frame, r int, g mv.BandwidthMatrix) error {
+	real, err := f.toData(g)
+	if err != nil {
+		return err
+	}
+	if e.Spectrum != nil {
+		free := e.Spectrum.Free()
+		for k := range free {
+			if need := 7 * math.Sqrt(real.At(k, k)); need > 1.01*free[k] {
+				c.notes = append(c.notes, fmt.Sprintf("the pilot of order %d reaches %.4g on axis %d, the transform is free of wrap-around for %.4g", r, need, k+1, free[k]))
+			}
+		}
+	}
+	psi := e.Sums().Functionals(real, r)[0]
+	c.pilots = append(c.pilots, Pilot{Order: r, Matrix: real, Psi: psi})
+	c.psi = f.functionals(r, psi)
+	return nil
 }
 
 // amise returns the estimated AMISE and its gradient by the entries of H.

@@ -1,17 +1,15 @@
 package bandwidth
 
 import (
+	"cmp"
 	"fmt"
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/optimize"
 
 	"drumlin/mv"
 )
-
-// objective is a criterion over matrices: its value and its gradient with
-// respect to the entries of H taken as independent, row-major.
-type objective func(h mv.BandwidthMatrix) (value float64, gradient []float64)
 
 // minimum is the end of a search.
 type minimum struct {
@@ -21,78 +19,179 @@ type minimum struct {
 	evaluations int
 }
 
+// search says where and how widely a criterion is minimised.
+type search struct {
+	shape  Shape
+	starts [][]float64
+	// descents is the number of starts, best first, from which a descent is
+	// made; 0 means all. The criterion is evaluated at every start anyway.
+	descents int
+	// low and high bound the eigenvalues of H; beyond them a steep wall stands.
+	// 0 means none.
+	low, high float64
+}
+
 // minimise searches for the least value of f from several fixed starts around
 // h0: h0, half and twice it, a multiple of the identity, and both signs of a
 // strong correlation, since a start on a diagonal matrix is a stationary point
 // of the correlation for symmetric data. Quasi-Newton steps (BFGS) in
 // log-Cholesky coordinates with the analytic gradient; the data must have been
 // divided by a common scale.
-func minimise(f objective, h0 mv.BandwidthMatrix, shape Shape) (minimum, error) {
-	d := h0.Dim()
-	c := coords{d, shape}
+func minimise(f Criterion, h0 mv.BandwidthMatrix, shape Shape) (minimum, error) {
+	return search{shape: shape, starts: starts(h0, coords{h0.Dim(), shape})}.run(f, h0.Dim())
+}
+
+func (s search) run(f Criterion, d int) (minimum, error) {
+	c := coords{d, s.shape}
 	best := minimum{value: math.Inf(1), status: Stopped}
-	var ends []float64
-	var spots []mv.BandwidthMatrix
-	for _, x0 := range starts(h0, c) {
-		evaluations := 0
-		eval := func(x []float64) (float64, []float64) {
-			h, err := mv.NewBandwidthMatrix(d, c.matrix(x))
-			if err != nil {
-				return math.Inf(1), make([]float64, len(x))
-			}
-			v, g := f(h)
-			return v, c.pull(x, g)
+	eval := func(x []float64) (float64, []float64) {
+		h, err := mv.NewBandwidthMatrix(d, c.matrix(x))
+		if err != nil {
+			return math.Inf(1), make([]float64, len(x))
 		}
-		unit, _ := eval(x0)
-		if unit = math.Abs(unit); unit == 0 || math.IsInf(unit, 0) || math.IsNaN(unit) {
+		best.evaluations++
+		v, g := f(h)
+		return v, c.pull(x, g)
+	}
+	type point struct {
+		x    []float64
+		v    float64
+		unit float64
+	}
+	var points []point
+	for _, x := range s.starts {
+		v, g := eval(x)
+		if math.IsInf(v, 0) || math.IsNaN(v) {
 			continue
 		}
-		problem := optimize.Problem{
-			Func: func(x []float64) float64 { evaluations++; v, _ := eval(x); return v / unit },
-			Grad: func(dst, x []float64) {
-				_, g := eval(x)
-				for i := range dst {
-					dst[i] = g[i] / unit
-				}
-			},
-		}
-		res, err := optimize.Minimize(problem, x0, &optimize.Settings{GradientThreshold: 1e-10, MajorIterations: 300}, &optimize.BFGS{})
-		if res == nil || math.IsNaN(res.F) || math.IsInf(res.F, 0) {
-			continue
-		}
-		best.evaluations += evaluations
-		v, g := eval(res.X)
 		var slope float64
 		for _, gi := range g {
-			slope = max(slope, math.Abs(gi)/unit)
+			slope = max(slope, math.Abs(gi))
 		}
-		h, merr := mv.NewBandwidthMatrix(d, c.matrix(res.X))
-		if merr != nil {
+		// A criterion that can be 0 anywhere is scaled by its slope too.
+		points = append(points, point{x, v, max(math.Abs(v), slope)})
+	}
+	slices.SortStableFunc(points, func(p, q point) int { return cmp.Compare(p.v, q.v) })
+	if s.descents > 0 && len(points) > s.descents {
+		points = points[:s.descents]
+	}
+	var ends []minimum
+	for _, p := range points {
+		if p.unit == 0 {
 			continue
 		}
-		// A line search that cannot improve on the last bits is an end, not a failure.
-		settled := err == nil || slope < 1e-6
-		if settled {
-			ends, spots = append(ends, v), append(spots, h)
+		end, ok := s.descend(eval, c, p.x, p.unit)
+		if !ok {
+			continue
 		}
-		if v < best.value {
-			best.value, best.matrix, best.status = v, h, Converged
-			if !settled {
-				best.status = Stopped
-			}
+		if end.status != Stopped {
+			ends = append(ends, end)
+		}
+		if end.value < best.value {
+			best.value, best.matrix, best.status = end.value, end.matrix, end.status
 		}
 	}
 	if best.matrix.Dim() == 0 {
 		return best, fmt.Errorf("bandwidth: the criterion has no finite value at any start: %w", ErrNoMinimum)
 	}
 	if best.status == Converged {
-		for i, v := range ends {
-			if v > best.value+1e-4*math.Abs(best.value) && apart(spots[i], best.matrix) {
+		for _, end := range ends {
+			if end.value > best.value+1e-4*math.Abs(best.value) && apart(end.matrix, best.matrix) {
 				best.status = Several
 			}
 		}
 	}
 	return best, nil
+}
+
+// descend makes one descent from x. The criterion is divided by unit.
+func (s search) descend(eval func([]float64) (float64, []float64), c coords, x []float64, unit float64) (minimum, bool) {
+	d := c.d
+	var lastX, lastG []float64
+	var lastV float64
+	at := func(x []float64) (float64, []float64) {
+		if lastX == nil || !slices.Equal(x, lastX) {
+			lastX = append(lastX[:0], x...)
+			lastV, lastG = eval(x)
+			lastV /= unit
+			for i := range lastG {
+				lastG[i] /= unit
+			}
+			if v, g := s.wall(c, x); v > 0 {
+				lastV += v
+				for i := range lastG {
+					lastG[i] += g[i]
+				}
+			}
+		}
+		return lastV, lastG
+	}
+	problem := optimize.Problem{
+		Func: func(x []float64) float64 { v, _ := at(x); return v },
+		Grad: func(dst, x []float64) { _, g := at(x); copy(dst, g) },
+	}
+	settings := &optimize.Settings{GradientThreshold: 1e-9, MajorIterations: 300, Converger: &optimize.FunctionConverge{Relative: 1e-13, Absolute: 1e-15, Iterations: 8}}
+	res, err := optimize.Minimize(problem, x, settings, &optimize.BFGS{})
+	if res == nil || math.IsNaN(res.F) || math.IsInf(res.F, 0) {
+		return minimum{}, false
+	}
+	h, merr := mv.NewBandwidthMatrix(d, c.matrix(res.X))
+	if merr != nil {
+		return minimum{}, false
+	}
+	v, g := at(res.X)
+	var slope float64
+	for _, gi := range g {
+		slope = max(slope, math.Abs(gi))
+	}
+	end := minimum{matrix: h, value: v * unit, status: Converged}
+	wall, _ := s.wall(c, res.X)
+	switch {
+	case wall > 0:
+		end.status = Border
+	// A line search that cannot improve on the last bits is an end, not a failure.
+	case err != nil && slope > 1e-5:
+		end.status = Stopped
+	}
+	return end, true
+}
+
+// wall returns 0 within the bounds on the eigenvalues of H and beyond them the
+// squared logarithm of the excess, with its gradient by the coordinates.
+func (s search) wall(c coords, x []float64) (float64, []float64) {
+	if s.low == 0 && s.high == 0 {
+		return 0, nil
+	}
+	d := c.d
+	values, vectors, err := eigen(d, c.matrix(x))
+	if err != nil {
+		return 0, nil
+	}
+	var v float64
+	grad := make([]float64, d*d)
+	for k, l := range values {
+		var e, slope float64
+		switch {
+		case s.low > 0 && l < s.low:
+			e = math.Log(s.low / math.Max(l, 1e-300))
+			slope = -2 * e / math.Max(l, 1e-300)
+		case s.high > 0 && l > s.high:
+			e = math.Log(l / s.high)
+			slope = 2 * e / l
+		default:
+			continue
+		}
+		v += 10 * e * e
+		for i := range d {
+			for j := range d {
+				grad[i*d+j] += 10 * slope * vectors[i*d+k] * vectors[j*d+k]
+			}
+		}
+	}
+	if v == 0 {
+		return 0, nil
+	}
+	return v, c.pull(x, grad)
 }
 
 // apart reports whether two matrices differ by more than 5 % of a diagonal entry.

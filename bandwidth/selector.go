@@ -5,6 +5,8 @@ import (
 	"fmt"
 	"math"
 
+	"gonum.org/v1/gonum/mat"
+
 	"drumlin/mv"
 )
 
@@ -144,4 +146,24 @@ func (e Events) check() error {
 		err = fmt.Errorf("principal variances %.6g to %.6g", v[0], v[d-1])
 	}
 	return fmt.Errorf("bandwidth: the events lie on a line or close to it (%v): %w", err, mv.ErrDegenerate)
+}
+
+// wholeN returns the effective size of all events.
+func (e Events) wholeN() float64 {
+	if e.WholeN > 0 {
+		return e.WholeN
+	}
+	return e.n()
+}
+
+// eigen returns the eigenvalues and orthonormal eigenvectors (columns,
+// row-major) of a symmetric positive definite matrix.
+func eigen(d int, m []float64) (values, vectors []float64, err error) {
+	var e mat.EigenSym
+	if !e.Factorize(mat.NewSymDense(d, append([]float64(nil), m...)), true) {
+		return nil, nil, fmt.Errorf("bandwidth: no principal axes of %v: %w", m, mv.ErrDegenerate)
+	}
+	var v mat.Dense
+	e.VectorsTo(&v)
+	return e.Values(nil), append([]float64(nil), v.RawMatrix().Data...), nil
 }

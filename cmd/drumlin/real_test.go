@@ -579,7 +579,7 @@ func asGeometry(t *testing.T, m orb.MultiPolygon, opts ...geom.NoValidate) geom.
 	if err != nil {
 		t.Fatal(err)
 	}
-	g, err := geom.UnmarshalGeoJSON([]byte(`{"type":"MultiPolygon","coordinates":` + string(coordinates) + `}`), opts...)
+	g, err := geom.UnmarshalGeoJSON([]byte(`{"type":"MultiPolygon","coordinates":`+string(coordinates)+`}`), opts...)
 	if err != nil {
 		t.Fatal(err)
 	}

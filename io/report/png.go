@@ -269,4 +269,3 @@ func (d *painter) dot(at [2]float64, r float64) {
 	d.disc(at, r+1, d.halo)
 	d.disc(at, r, d.mark)
 }
-

@@ -20,12 +20,12 @@ import (
 type painter struct {
 	palette
 	inDisc color.NRGBA // ground of a numbered disc
-	dark  bool
-	img   *image.NRGBA
-	scale float64 // pixels a unit
-	ras   *vector.Rasterizer
-	fonts [2]*opentype.Font // regular, bold
-	faces map[faceKey]font.Face
+	dark   bool
+	img    *image.NRGBA
+	scale  float64 // pixels a unit
+	ras    *vector.Rasterizer
+	fonts  [2]*opentype.Font // regular, bold
+	faces  map[faceKey]font.Face
 }
 
 type faceKey struct {

@@ -34,6 +34,8 @@ func MapFlags(f *pflag.FlagSet) {
 	f.String("lattice", "auto", "nodes along the longer axis: auto (1024, up to 4096 until the minor scale spans 4 steps) or a number")
 	f.String("region-rule", "events", "what a region's content counts: events (events not yet seen) or mass (of the estimate)")
 	f.Float64("min-events", 10, "least events that a released part, hole or peak rests on")
+	f.Bool("sensitivity", true, "regions at H/2 and 2H in the report and the record")
+	f.String("png", "", "file for the map as a picture; must not exist, unless --replace")
 	f.Int("workers", 0, "goroutines that work; 0: all CPUs")
 	f.String("out", "", "folder to write; must not exist, or hold an earlier bundle with --replace")
 	f.Bool("replace", false, "replace an earlier bundle")

@@ -31,6 +31,9 @@ type Settings struct {
 	RegionRule string    `mapstructure:"region-rule"`
 	MinEvents  float64   `mapstructure:"min-events"`
 
+	Sensitivity bool `mapstructure:"sensitivity"` // regions at H/2 and 2H too
+
+	PNG     string   `mapstructure:"png"` // picture to write, none if ""
 	Workers int      `mapstructure:"workers"`
 	Out     string   `mapstructure:"out"`
 	Replace bool     `mapstructure:"replace"`

@@ -55,6 +55,8 @@ type Estimate struct {
 	LatticeError  float64 // expected error from binning, share of the density's maximum
 	Floored       bool    // H was widened to stepsFloor lattice steps
 	Nodes         int     // along the longer axis
+	Spectrum      *mv.Spectrum
+	Covariance    []float64
 }
 
 // finerNeeded asks for another pass over the events with a tally that resolves
@@ -159,6 +161,7 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 			return nil, err
 		}
 		e.Bias = spectrum.SmoothingBias(e.Choice.Matrix, e.BiasPilot.Matrix)
+		e.Spectrum, e.Covariance = spectrum, cov
 		return e, nil
 	}
 }

@@ -17,6 +17,7 @@ import (
 	"drumlin/cmd/drumlin/internal/progress"
 	"drumlin/io/events"
 	"drumlin/io/record"
+	"drumlin/io/report"
 	"drumlin/mv"
 	"drumlin/spatial"
 )
@@ -154,8 +155,19 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		return nil, err
 	}
 	rec := r.record(in, counted, est, release, inputs)
+	page := report.Page{Record: rec, Release: release, Projection: in.plane, Choices: choices(est)}
+	if r.settings.Sensitivity {
+		err := r.timed("sensitivity", func() (err error) {
+			r.report.Stage("regions at H/2 and 2H")
+			page.Alternatives, rec.Sensitivity, err = sensitivity(est, r.settings, release, in.plane, r.workers)
+			return err
+		})
+		if err != nil {
+			return nil, err
+		}
+	}
 	r.report.Stage("writing")
-	if err := r.write(ctx, target, release, rec); err != nil {
+	if err := r.write(ctx, target, release, rec, page); err != nil {
 		return nil, err
 	}
 	for _, text := range r.warnings {

@@ -15,6 +15,7 @@ import (
 	"drumlin/io/geojson"
 	"drumlin/io/geotiff"
 	"drumlin/io/record"
+	"drumlin/io/report"
 	"drumlin/mv"
 	"drumlin/spatial"
 )
@@ -135,7 +136,7 @@ func (r *run) recordedSettings(in *reading) record.Settings {
 	}
 	return append(out, record.Settings{
 		{Name: "content", Value: slices.Sorted(slices.Values(s.Content))}, {Name: "bands", Value: s.Bands}, {Name: "lattice", Value: s.Lattice},
-		{Name: "region-rule", Value: s.RegionRule}, {Name: "min-events", Value: s.MinEvents}, {Name: "formats", Value: s.Formats},
+		{Name: "region-rule", Value: s.RegionRule}, {Name: "min-events", Value: s.MinEvents}, {Name: "sensitivity", Value: s.Sensitivity}, {Name: "formats", Value: s.Formats},
 	}...)
 }
 
@@ -241,7 +242,7 @@ func program() record.Program {
 const Version = "0.1.0"
 
 // write puts the release and the record into the bundle and publishes it.
-func (r *run) write(ctx context.Context, b *bundle.Bundle, rel *spatial.Release, rec *record.Record) error {
+func (r *run) write(ctx context.Context, b *bundle.Bundle, rel *spatial.Release, rec *record.Record, page report.Page) error {
 	meta := geojson.Meta{Weighted: r.settings.Weight != "", Caution: record.Caution}
 	if r.settings.Weight != "" {
 		meta.Unit = "weight per km2"
@@ -266,20 +267,30 @@ func (r *run) write(ctx context.Context, b *bundle.Bundle, rel *spatial.Release,
 			if err != nil {
 				return err
 			}
-			if err := f.write(w); err != nil {
+			n := note(w)
+			if err := f.write(n); err != nil {
 				_ = w.Close() // the first error is the one to tell
 				return fmt.Errorf("%s: %w", f.name, err)
 			}
 			if err := w.Close(); err != nil {
 				return err
 			}
+			page.Files = append(page.Files, n.file(f.name))
 		}
 		return nil
 	})
 	if err != nil {
 		return err
 	}
+	var picture []byte
+	err = r.timed("report", func() (err error) { picture, err = r.writeReport(b, page); return err })
+	if err != nil {
+		return err
+	}
 	rec.Times.Stages = r.stages
 	rec.Times.Finished = r.clock().UTC()
-	return b.Commit(rec)
+	if err := b.Commit(rec); err != nil {
+		return err
+	}
+	return r.writePicture(ctx, picture)
 }
