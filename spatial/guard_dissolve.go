@@ -34,8 +34,7 @@ func (s *Isolines) dissolve(m *measure, least float64) *dissolved {
 	if !(least > 1) {
 		return d
 	}
-	var find func(f int32) int32
-	find = func(f int32) int32 {
+	find := func(f int32) int32 {
 		for d.into[f] != f {
 			d.into[f] = d.into[d.into[f]]
 			f = d.into[f]
