@@ -146,7 +146,7 @@ amount by which smoothing lowers them.`,
 		return fmt.Errorf("%w: %w; see drumlin %s --help", errUsage, err, c.Name())
 	})
 	root.SetHelpTemplate(root.HelpTemplate() + exitHelp)
-	root.AddCommand(a.mapCommand(), a.evaluateCommand(), a.demoCommand(), a.versionCommand())
+	root.AddCommand(a.mapCommand(), a.bandwidthCommand(), a.evaluateCommand(), a.demoCommand(), a.versionCommand())
 	for _, c := range root.Commands() {
 		c.Args = usageArgs(c.Args)
 	}

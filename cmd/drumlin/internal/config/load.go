@@ -25,7 +25,7 @@ func MapFlags(f *pflag.FlagSet) {
 	f.String("crs", "", "CRS of the coordinates: EPSG:n, or plane for metres without a place; default: degrees if the names say so")
 	f.String("work-crs", "auto", "plane of the estimate: auto (equal-area, centred on the events) or EPSG:n")
 	f.String("weight", "", "column of weights, above 0")
-	f.String("bandwidth", "plug-in", "how the bandwidth matrix is chosen: plug-in, normal-reference")
+	f.String("bandwidth", BandwidthNames[0], "how the bandwidth matrix is chosen: "+strings.Join(BandwidthNames, ", "))
 	f.String("shape", "full", "form of the bandwidth matrix: full, diagonal, scalar")
 	f.String("matrix", "", "a fixed bandwidth matrix h11,h12,h22 in square metres")
 	f.Float64("scale", 0, "a fixed bandwidth of scale h in metres, the same in all directions")

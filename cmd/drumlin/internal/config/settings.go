@@ -84,7 +84,7 @@ func (s *Settings) Validate() error {
 	if (s.X == "") != (s.Y == "") {
 		bad("only one of x and y is given; name both columns")
 	}
-	oneOf("bandwidth", s.Bandwidth, "plug-in", "normal-reference")
+	oneOf("bandwidth", s.Bandwidth, BandwidthNames...)
 	oneOf("shape", s.Shape, "full", "diagonal", "scalar")
 	oneOf("region-rule", s.RegionRule, "events", "mass")
 	for _, v := range s.Formats {
