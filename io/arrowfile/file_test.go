@@ -85,7 +85,7 @@ func TestReadsBack(t *testing.T) {
 			big[1][i] = events.Null
 		}
 	}
-	small := [][]float64{{math.Inf(1), -0.0}, {events.Null, 1e-300}}
+	small := [][]float64{{math.Inf(1), math.Copysign(0, -1)}, {events.Null, 1e-300}}
 	want := [][]float64{append(append([]float64(nil), big[0]...), small[0]...), append(append([]float64(nil), big[1]...), small[1]...)}
 	for what, opt := range map[string]arrowfile.WriteOptions{
 		"plain": {}, "zstd": {Zstd: true}, "lz4": {LZ4: true}, "metadata": {Metadata: map[string]string{"b": "2", "a": "1"}},

@@ -16,7 +16,7 @@ import (
 // What is written is read back to the bit, nulls as nulls, odd names as names.
 func TestWriteReadsBack(t *testing.T) {
 	names := []string{"x", `a "quoted, name`}
-	cols := [][]float64{{0.1, -1e-300, 1e22, 123456.75, 5}, {events.Null, math.MaxFloat64, -0.0, 1.0 / 3, math.Inf(-1)}}
+	cols := [][]float64{{0.1, -1e-300, 1e22, 123456.75, 5}, {events.Null, math.MaxFloat64, math.Copysign(0, -1), 1.0 / 3, math.Inf(-1)}}
 	var b bytes.Buffer
 	w, err := csvfile.NewWriter(&b, names)
 	if err != nil {

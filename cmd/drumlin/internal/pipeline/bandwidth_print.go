@@ -35,7 +35,7 @@ func (t *Table) Print(w io.Writer) {
 		fmt.Fprintf(tw, "%s\t%s\t%.5g\t%.5g\t%.5g\t%s\t%s\t%.0f\t%s\t%.2f\t%.3f s\t%s\t\n",
 			r.Asked, r.Shape, r.Matrix[0], r.Matrix[1], r.Matrix[3], Significant(r.Major), Significant(r.Minor), r.Bearing, crit, r.Relative, r.Seconds, r.Status)
 	}
-	tw.Flush()
+	_ = tw.Flush() // to a writer whose errors the caller sees
 	fmt.Fprintln(w, "\nExpected error: that of the plug-in functionals for each matrix, over the least of the table; a yardstick, not a verdict.")
 	if s := t.Stability; s != nil {
 		fmt.Fprintf(w, "Stability of %s (%d bootstrap replicates, seed %d), 5 to 95 %%: long scale %s to %s m, short scale %s to %s m, bearing %.0f to %.0f degrees.\n",
