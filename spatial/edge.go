@@ -73,7 +73,7 @@ func (w *StudyArea) Mask(l mv.Lattice) mv.Grid {
 
 const (
 	maskReach   = 7.5     // scales beyond which a Gaussian kernel holds nothing
-	maskSteps   = 20      // steps of the mask that a kernel's minor scale should span
+	maskSteps   = 10      // steps of the mask that a kernel's minor scale should span
 	maskNodes   = 1 << 24 // of the refined mask, at most
 	maskRefine  = 2       // doublings, at most
 	leastInside = 1e-12
@@ -86,8 +86,8 @@ const (
 //
 // Source: Diggle 1985; Jones 1993. The mask is convolved through its transform,
 // at most four times finer than the lattice; against closed forms the error is
-// about 1e-6 where a kernel's minor scale spans 20 steps of the mask and border
-// and lattice are aligned, 1e-5 elsewhere (see the tests).
+// about 1e-6 where a kernel's minor scale spans 10 steps of the mask
+// (see the tests).
 func (w *StudyArea) KernelMass(l mv.Lattice, workers int, hs ...mv.BandwidthMatrix) ([]mv.Grid, error) {
 	wide, minor := [2]float64{}, math.Inf(1)
 	for _, h := range hs {

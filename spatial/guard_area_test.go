@@ -116,7 +116,7 @@ func checkWithin(t *testing.T, what string, s study, rel *spatial.Release, least
 		judge(t, deg, name+" in degrees")
 		nearly(t, name+": area", mp.Area(), area*1e6, 1e-9*area*1e6)
 		geodesic := spatial.EllipsoidArea(deg)
-		nearly(t, name+": area on the ellipsoid", geodesic, area*1e6, 2e-5*area*1e6+2e4)
+		nearly(t, name+": area on the ellipsoid", geodesic, area*1e6, 1e-4*area*1e6+2e4) // chords bent by less than 1e-3 of their length stay straight
 		for _, p := range deg {
 			for k, ring := range p {
 				if (spatial.EllipsoidRingArea(ring) > 0) != (k == 0) {

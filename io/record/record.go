@@ -24,6 +24,7 @@ type Record struct {
 	Lattice     Lattice       `json:"lattice"`
 	Bandwidth   Bandwidth     `json:"bandwidth"`
 	Regions     Regions       `json:"regions"`
+	StudyArea   *StudyArea    `json:"study_area,omitempty"`
 	Sensitivity []Sensitivity `json:"sensitivity,omitempty"`
 	Guard       Guard         `json:"guard"`
 	Warnings    []string      `json:"warnings,omitempty"` // about this run
@@ -166,6 +167,23 @@ type Regions struct {
 	Rule     string    `json:"rule"` // "events" or "mass"
 	Text     string    `json:"text"` // the rule in a sentence: RegionRuleText(Rule)
 	Contents []float64 `json:"contents"`
+}
+
+// StudyArea is where events could be observed, and what was done at its edge.
+type StudyArea struct {
+	File     string  `json:"file"` // name without folder
+	Digest   Digest  `json:"digest"`
+	Polygons int     `json:"polygons"` // on the plane, after those that meet were united
+	Holes    int     `json:"holes"`
+	Vertices int     `json:"vertices"`
+	AreaKM2  float64 `json:"area_km2"` // on the plane
+	Edge     string  `json:"edge"`     // "renormalise", "conserve", "none"
+	Text     string  `json:"text"`     // the same in a sentence
+	// MassInside is the estimate's integral over the area: 1 where mass is conserved.
+	MassInside float64 `json:"mass_inside"`
+	// LeastInside is the least kernel mass inside the area at a place with events;
+	// 1 without correction.
+	LeastInside float64 `json:"least_kernel_mass_at_events"`
 }
 
 // Sensitivity is what the regions would be at another multiple of H.

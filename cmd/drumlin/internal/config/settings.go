@@ -25,6 +25,9 @@ type Settings struct {
 	Matrix    []float64 `mapstructure:"matrix"` // h11, h12, h22 in square metres
 	Scale     float64   `mapstructure:"scale"`  // h in metres
 
+	StudyArea string `mapstructure:"study-area"` // GeoJSON file, none if ""
+	Edge      string `mapstructure:"edge"`       // renormalise, conserve, none
+
 	Content    []float64 `mapstructure:"content"` // per cent
 	Bands      []float64 `mapstructure:"bands"`   // one whole number: how many; else levels, events per km2
 	Lattice    string    `mapstructure:"lattice"` // auto or a number of nodes
@@ -86,6 +89,7 @@ func (s *Settings) Validate() error {
 	oneOf("bandwidth", s.Bandwidth, "plug-in", "normal-reference")
 	oneOf("shape", s.Shape, "full", "diagonal", "scalar")
 	oneOf("region-rule", s.RegionRule, "events", "mass")
+	oneOf("edge", s.Edge, "renormalise", "conserve", "none")
 	for _, v := range s.Formats {
 		oneOf("formats", v, "geojson", "geotiff")
 	}

@@ -26,7 +26,7 @@ func analyse(e *Estimate, s *config.Settings) (spatial.Analysis, []string, error
 	a := spatial.Analysis{
 		Density: e.Density, Counts: e.Counts, Weights: e.Weights, FineCounts: e.FineCounts,
 		Events: e.Events, Total: e.Total,
-		KernelAtZero: e.KernelAtZero(), RegionRule: s.RegionRule,
+		KernelAtZero: e.KernelAtZero(), RegionRule: s.RegionRule, Area: e.Edge.area,
 	}
 	warnings, err := addThresholds(&a, e, s)
 	if err != nil {
@@ -36,13 +36,13 @@ func analyse(e *Estimate, s *config.Settings) (spatial.Analysis, []string, error
 		return a, nil, err
 	}
 	least := max(s.MinEvents, 1) * a.KernelAtZero / e.Events
-	for _, m := range spatial.FindMaxima(e.Density, least) {
+	for _, m := range spatial.FindMaxima(e.seen(), least) {
 		at := spatial.XY{X: m.X, Y: m.Y}
-		a.Peaks = append(a.Peaks, spatial.Summit{
-			At: at, Density: m.Value,
-			StandardError: math.Sqrt(mv.LeadingVariance(mv.Gaussian, e.Choice.Matrix, m.Value, e.EffectiveN)),
-			SmoothingBias: spatial.Sample(e.Bias, at),
-		})
+		if e.Edge.area != nil && !e.Edge.area.Contains(at) {
+			at = spatial.XY{X: e.Density.Coord(0, m.I), Y: e.Density.Coord(1, m.J)}
+			m.Value = e.Density.Values[m.J*e.Density.N[0]+m.I]
+		}
+		a.Peaks = append(a.Peaks, e.summit(at, m.Value))
 	}
 	slices.SortStableFunc(a.Peaks, func(p, q spatial.Summit) int {
 		switch {
@@ -56,17 +56,21 @@ func analyse(e *Estimate, s *config.Settings) (spatial.Analysis, []string, error
 	return a, warnings, nil
 }
 
-// regionThresholds returns the density on the border of the region with each
+// regionThreshold returns the density on the border of the region with a
 // content, by the rule asked for.
-func regionThreshold(e *Estimate, density mv.Grid, atZero, content float64, rule string) (float64, error) {
+func (e *Estimate) regionThreshold(atZero, content float64, rule string) (float64, error) {
+	density := e.Density.Values
 	if rule == "mass" {
-		return mv.DensityQuantile(density.Values, density.Values, content)
+		return mv.DensityQuantile(density, e.massWeights(), content)
 	}
 	counted := e.Counts
 	if e.Weights.Values != nil {
 		counted = e.Weights
 	}
-	q, err := mv.DensityQuantile(density.Values, counted.Values, content)
+	if len(e.Inside.Values) > 0 {
+		return mv.DensityQuantile(e.leaveOneOut(atZero), counted.Values, content)
+	}
+	q, err := mv.DensityQuantile(density, counted.Values, content)
 	if err != nil {
 		return 0, err
 	}
@@ -77,7 +81,7 @@ func addThresholds(a *spatial.Analysis, e *Estimate, s *config.Settings) (warnin
 	lone := a.KernelAtZero / e.EffectiveN * math.Exp(-loneScales*loneScales/2)
 	contents := slices.Sorted(slices.Values(s.Content))
 	for _, c := range contents {
-		t, err := regionThreshold(e, e.Density, a.KernelAtZero, c/100, s.RegionRule)
+		t, err := e.regionThreshold(a.KernelAtZero, c/100, s.RegionRule)
 		if err != nil {
 			return nil, err
 		}
@@ -109,7 +113,7 @@ func bandLevels(e *Estimate, s *config.Settings) ([]float64, error) {
 	if err != nil {
 		return nil, err
 	}
-	top := slices.Max(e.Density.Values)
+	top := e.top()
 	var out []float64
 	for _, v := range roundLevels(low/unit, top/unit, n) {
 		out = append(out, v*unit)

@@ -19,6 +19,7 @@ type reading struct {
 	plane        spatial.Projection // of the estimate
 	reproject    bool               // input is projected, but not on the plane of the estimate
 	warnings     []string
+	area         *areaFile // nil without a study area
 }
 
 func (r *reading) columns() []string {
@@ -109,7 +110,8 @@ func inFile(err error, src events.Source) error {
 
 // choosePlane settles the plane of the estimate: the one asked for; metres
 // without a place as they are; an equal-area input plane as it is; else
-// Lambert's equal-area projection centred on the events, to whole degrees.
+// Lambert's equal-area projection centred on the study area or the events, to
+// whole degrees.
 func (r *reading) choosePlane(ctx context.Context, s *config.Settings, sources []events.Source, w *pool) error {
 	if r.input.Plane {
 		if s.WorkCRS != "auto" && s.WorkCRS != "plane" {
@@ -149,6 +151,9 @@ func (r *reading) choosePlane(ctx context.Context, s *config.Settings, sources [
 // centre comes from the files' column statistics where they are narrow, else
 // from a first pass over the coordinates.
 func (r *reading) centre(ctx context.Context, sources []events.Source, w *pool) (spatial.LonLat, error) {
+	if r.area != nil {
+		return spatial.AreaCentre(r.area.shape), nil
+	}
 	if r.input.Geographic {
 		lonMin, lonMax, latMin, latMax := math.Inf(1), math.Inf(-1), math.Inf(1), math.Inf(-1)
 		all := true

@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"path/filepath"
 	"runtime"
 	"runtime/debug"
 	"slices"
@@ -111,6 +112,7 @@ func (r *run) record(in *reading, c *tallied, e *Estimate, rel *spatial.Release,
 		}
 	}
 	rec.CRS.Distortion = distortion(in.plane, e.Density.Lattice)
+	rec.StudyArea = areaRecord(in.area, e)
 	return rec
 }
 
@@ -136,6 +138,7 @@ func (r *run) recordedSettings(in *reading) record.Settings {
 	}
 	return append(out, record.Settings{
 		{Name: "content", Value: slices.Sorted(slices.Values(s.Content))}, {Name: "bands", Value: s.Bands}, {Name: "lattice", Value: s.Lattice},
+		{Name: "study-area", Value: filepath.Base(s.StudyArea)}, {Name: "edge", Value: s.Edge},
 		{Name: "region-rule", Value: s.RegionRule}, {Name: "min-events", Value: s.MinEvents}, {Name: "sensitivity", Value: s.Sensitivity}, {Name: "formats", Value: s.Formats},
 	}...)
 }
