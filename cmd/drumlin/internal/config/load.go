@@ -41,7 +41,7 @@ func MapFlags(f *pflag.FlagSet) {
 	f.Int("workers", 0, "goroutines that work; 0: all CPUs")
 	f.String("out", "", "folder to write; must not exist, or hold an earlier bundle with --replace")
 	f.Bool("replace", false, "replace an earlier bundle")
-	f.String("formats", "geojson,geotiff", "what to write: geojson, geotiff")
+	f.String("formats", "geojson,geotiff", "what to write: geojson, geojson-seq, geoparquet, flatgeobuf; for the surface geotiff, parquet")
 	f.Bool("json", false, "messages as JSON lines")
 	f.Bool("quiet", false, "no progress")
 }

@@ -91,10 +91,10 @@ func (s *Settings) Validate() error {
 	oneOf("region-rule", s.RegionRule, "events", "mass")
 	oneOf("edge", s.Edge, "renormalise", "conserve", "none")
 	for _, v := range s.Formats {
-		oneOf("formats", v, "geojson", "geotiff")
+		oneOf("formats", v, "geojson", "geojson-seq", "geoparquet", "flatgeobuf", "geotiff", "parquet")
 	}
 	if len(s.Formats) == 0 {
-		bad("formats is empty; choose geojson, geotiff or both")
+		bad("formats is empty; choose some of geojson, geojson-seq, geoparquet, flatgeobuf, geotiff, parquet")
 	}
 	if n := len(s.Matrix); n != 0 && n != 3 {
 		bad("matrix has %d numbers; give h11,h12,h22 in square metres", n)

@@ -3,7 +3,6 @@ package pipeline
 import (
 	"context"
 	"fmt"
-	"io"
 	"math"
 	"path/filepath"
 	"runtime"
@@ -14,7 +13,6 @@ import (
 	"drumlin/io/bundle"
 	"drumlin/io/events"
 	"drumlin/io/geojson"
-	"drumlin/io/geotiff"
 	"drumlin/io/record"
 	"drumlin/io/report"
 	"drumlin/mv"
@@ -250,19 +248,8 @@ func (r *run) write(ctx context.Context, b *bundle.Bundle, rel *spatial.Release,
 	if r.settings.Weight != "" {
 		meta.Unit = "weight per km2"
 	}
-	type file struct {
-		format, name string
-		write        func(w io.Writer) error
-	}
 	err := r.timed("write", func() error {
-		for _, f := range []file{
-			{"geojson", "regions.geojson", func(w io.Writer) error { return geojson.WriteRegions(w, rel, meta) }},
-			{"geojson", "contours.geojson", func(w io.Writer) error { return geojson.WriteContours(w, rel, meta) }},
-			{"geojson", "peaks.geojson", func(w io.Writer) error { return geojson.WritePeaks(w, rel, meta) }},
-			{"geotiff", "surface.tif", func(w io.Writer) error {
-				return geotiff.Write(ctx, w, rel, geotiff.Options{Workers: r.workers, Unit: meta.Unit})
-			}},
-		} {
+		for _, f := range r.outputs(ctx, rel, page.Projection, meta) {
 			if !slices.Contains(r.settings.Formats, f.format) {
 				continue
 			}
