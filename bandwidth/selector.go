@@ -115,11 +115,12 @@ func (e Events) n() float64 { return e.Sums().EffectiveN() }
 // scale returns sqrt(tr S / d), the common scale by which every selector
 // divides the data, so that its result does not depend on their unit or, in
 // the plane, on the orientation of the axes.
-func (e Events) scale() float64 {
+func (e Events) scale() float64 { return commonScale(e.dim(), e.Covariance) }
+
+func commonScale(d int, cov []float64) float64 {
 	var tr float64
-	d := e.dim()
 	for i := range d {
-		tr += e.Covariance[i*d+i]
+		tr += cov[i*d+i]
 	}
 	return math.Sqrt(tr / float64(d))
 }
@@ -145,7 +146,7 @@ func (e Events) check() error {
 		}
 		err = fmt.Errorf("principal variances %.6g to %.6g", v[0], v[d-1])
 	}
-	return fmt.Errorf("bandwidth: the events lie on a line or close to it (%v): %w", err, mv.ErrDegenerate)
+	return fmt.Errorf("bandwidth: the events lie on a line or close to it (%w): %w", err, mv.ErrDegenerate)
 }
 
 // wholeN returns the effective size of all events.

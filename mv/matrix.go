@@ -54,7 +54,7 @@ func NewBandwidthMatrix(d int, h []float64) (BandwidthMatrix, error) {
 	chol.LTo(&l)
 	var inv mat.SymDense
 	if err := chol.InverseTo(&inv); err != nil {
-		return BandwidthMatrix{}, fmt.Errorf("mv: bandwidth matrix %s is singular to working precision (%v): %w", formatSquare(d, m.h), err, ErrNotPositiveDefinite)
+		return BandwidthMatrix{}, fmt.Errorf("mv: bandwidth matrix %s is singular to working precision (%w): %w", formatSquare(d, m.h), err, ErrNotPositiveDefinite)
 	}
 	m.lower, m.inv = make([]float64, d*d), make([]float64, d*d)
 	for i := range d {

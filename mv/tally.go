@@ -71,7 +71,7 @@ type Tally struct {
 
 	events, outside int64
 
-	queue queue
+	queue *queue // nil before the first Add
 }
 
 type tileKey struct{ x, y int32 }
@@ -269,7 +269,7 @@ func (tl *tile) add(o *tile) {
 func (t *Tally) Clone() *Tally {
 	t.flush()
 	c := *t
-	c.queue = queue{}
+	c.queue = nil
 	c.tiles = make([]*tile, len(t.tiles))
 	c.index.reset(2 * len(t.tiles))
 	for i, tl := range t.tiles {

@@ -5,22 +5,20 @@ import (
 	"math"
 )
 
-// queueSize is how many events wait until they go to their nodes together,
-// sorted by tile: one tile (34 kB) stays in the processor's cache while its
-// events are added, where unsorted events would miss cache and page tables at
+// bufferSize is how many events wait in a tile's buffer until they go to its
+// nodes together. The tile (34 kB) then stays in the processor's cache while
+// they are added, where single events would miss cache and page tables at
 // nearly every one.
-const queueSize = 1 << 18
+const bufferSize = 128
+
+const recentBits = 6 // edge of the table of recent tiles: 64 by 64
 
 // queue holds events that have a tile but are not yet at their nodes.
 type queue struct {
-	n     int
-	tile  []int32  // per event: its tile
-	local []uint64 // per event: grains from the tile's corner, y in the high word, x in the low
-	w     []uint64 // per event: integer weight, nil without weights
-	count []int32  // per tile: its events in the queue
-
-	sorted  []uint64 // scratch: local by tile
-	sortedW []uint64
+	local  []uint64 // bufferSize per tile: grains from the tile's corner, y in the high word, x in the low
+	w      []uint64 // their integer weights, nil without weights
+	count  []int32  // events waiting, per tile
+	recent [1 << (2 * recentBits)]tileSlot
 }
 
 // Add bins events at x, y with weights w (nil for 1 each). Every number must
@@ -35,17 +33,13 @@ func (t *Tally) Add(x, y, w []float64) error {
 	if len(x) > 0 && len(t.tiles) == 0 {
 		t.chooseLevel(x, y)
 	}
-	q := &t.queue
-	if q.tile == nil {
-		q.tile, q.local, q.sorted = make([]int32, queueSize), make([]uint64, queueSize), make([]uint64, queueSize)
-		if t.weighted {
-			q.w, q.sortedW = make([]uint64, queueSize), make([]uint64, queueSize)
-		}
+	if t.queue == nil {
+		t.queue = &queue{}
 	}
+	q := t.queue
 	scale := math.Ldexp(1, -t.grain)
 	shift := uint(t.level - t.grain + tileBits)
 	mask := int64(1)<<shift - 1
-	last, lastKey := -1, tileKey{}
 	for i := range x {
 		gx, gy := x[i]*scale, y[i]*scale
 		if !(math.Abs(gx) < maxCoord && math.Abs(gy) < maxCoord) {
@@ -57,41 +51,55 @@ func (t *Tally) Add(x, y, w []float64) error {
 		}
 		ix, iy := roundInt(gx), roundInt(gy)
 		key := tileKey{int32(ix >> shift), int32(iy >> shift)}
-		if key != lastKey || last < 0 {
-			at, ok := t.index.find(key)
-			for !ok && len(t.tiles) >= t.budget && t.level < t.grain+maxShift {
-				t.Coarsen() // the budget is passed
+		slot := &q.recent[uint32(key.y)<<recentBits&(1<<(2*recentBits)-1)|uint32(key.x)&(1<<recentBits-1)]
+		if slot.key != key || slot.pos == 0 {
+			pos := t.find(key)
+			for pos < 0 { // the budget is passed
+				t.Coarsen()
 				shift = uint(t.level - t.grain + tileBits)
 				mask = int64(1)<<shift - 1
 				key = tileKey{int32(ix >> shift), int32(iy >> shift)}
-				at, ok = t.index.find(key)
+				slot = &q.recent[uint32(key.y)<<recentBits&(1<<(2*recentBits)-1)|uint32(key.x)&(1<<recentBits-1)]
+				pos = t.find(key)
 			}
-			if !ok {
-				at = len(t.tiles)
-				t.newTile(key)
-			}
-			for len(q.count) <= at {
-				q.count = append(q.count, 0)
-			}
-			last, lastKey = at, key
+			*slot = tileSlot{key, int32(pos) + 1}
 		}
-		n := q.n
+		k := int(slot.pos) - 1
+		at := k*bufferSize + int(q.count[k])
 		if w != nil {
 			if !(w[i] >= 0 && w[i] <= maxWeight) {
 				return fmt.Errorf("mv: tally: weight %g of event %d is not between 0 and %g: %w", w[i], i, float64(maxWeight), ErrNotFinite)
 			}
-			q.w[n] = uint64(math.RoundToEven(w[i] * (1 << weightBits)))
+			q.w[at] = uint64(math.RoundToEven(w[i] * (1 << weightBits)))
 		}
-		q.tile[n] = int32(last)
-		q.local[n] = uint64(iy&mask)<<32 | uint64(ix&mask)
-		q.count[last]++
-		q.n = n + 1
+		q.local[at] = uint64(iy&mask)<<32 | uint64(ix&mask)
 		t.events++
-		if q.n == queueSize {
-			t.flush()
+		if q.count[k]++; q.count[k] == bufferSize {
+			t.settle(k)
 		}
 	}
 	return nil
+}
+
+// find returns the position of the tile, made if need be, or -1 when that
+// would pass the budget.
+func (t *Tally) find(key tileKey) int {
+	pos, ok := t.index.find(key)
+	if !ok {
+		if len(t.tiles) >= t.budget && t.level < t.grain+maxShift {
+			return -1
+		}
+		pos = len(t.tiles)
+		t.newTile(key)
+	}
+	for q := t.queue; len(q.count) <= pos; {
+		q.count = append(q.count, 0)
+		q.local = append(q.local, make([]uint64, bufferSize)...)
+		if t.weighted {
+			q.w = append(q.w, make([]uint64, bufferSize)...)
+		}
+	}
+	return pos
 }
 
 // roundInt rounds to the nearest integer, ties to even, for |v| < 2^50.
@@ -122,43 +130,37 @@ func (t *Tally) chooseLevel(x, y []float64) {
 	}
 }
 
-// flush brings the queued events to their nodes.
-func (t *Tally) flush() {
-	q := &t.queue
-	if q.n == 0 {
-		return
-	}
+// settle brings a tile's waiting events to its nodes.
+func (t *Tally) settle(k int) {
+	q := t.queue
+	n := int(q.count[k])
+	q.count[k] = 0
 	shift := uint(t.level - t.grain)
-	quanta := uint64(1) << (2 * shift)
-	if t.pending+uint64(q.n)*quanta > 1<<63 {
+	quanta := uint64(n) << (2 * shift)
+	if t.pending+quanta > 1<<63 {
 		t.normalise()
 	}
-	t.pending += uint64(q.n) * quanta
+	t.pending += quanta
+	from, to := k*bufferSize, k*bufferSize+n
+	if t.weighted {
+		t.tiles[k].addWeights(q.local[from:to], q.w[from:to], shift)
+	}
+	t.tiles[k].addEvents(q.local[from:to], shift)
+}
 
-	// Counting sort by tile: count becomes each tile's first slot, then its end.
-	var sum int32
-	for k, c := range q.count {
-		q.count[k] = sum
-		sum += c
+// flush brings all waiting events to their nodes and empties the table of
+// recent tiles, whose positions may change.
+func (t *Tally) flush() {
+	q := t.queue
+	if q == nil {
+		return
 	}
-	for i, k := range q.tile[:q.n] {
-		at := q.count[k]
-		q.count[k] = at + 1
-		q.sorted[at] = q.local[i]
-		if q.w != nil {
-			q.sortedW[at] = q.w[i]
+	for k, n := range q.count {
+		if n > 0 {
+			t.settle(k)
 		}
 	}
-	var from int32
-	for k, to := range q.count {
-		if q.w != nil {
-			t.tiles[k].addWeights(q.sorted[from:to], q.sortedW[from:to], shift)
-		}
-		t.tiles[k].addEvents(q.sorted[from:to], shift)
-		from = to
-	}
-	q.n = 0
-	clear(q.count)
+	clear(q.recent[:])
 }
 
 // addEvents adds events at positions within the tile, in grains.

@@ -11,7 +11,6 @@ func (t *Tally) Coarsen() {
 	fine := t.tiles
 	t.tiles = make([]*tile, 0, len(fine)/2+1)
 	t.index.reset(len(fine))
-	t.queue.count = t.queue.count[:0]
 	t.level++
 	for i, src := range fine {
 		fine[i] = nil // let the collector have it

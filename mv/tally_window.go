@@ -71,7 +71,6 @@ func (t *Tally) Trim(b Box) int64 {
 	edge := math.Ldexp(tileCells, t.level)
 	kept := t.tiles[:0]
 	t.index.reset(len(t.tiles))
-	t.queue.count = t.queue.count[:0]
 	var gone int64
 	for _, tl := range t.tiles {
 		x, y := float64(tl.key.x)*edge, float64(tl.key.y)*edge

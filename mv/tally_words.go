@@ -42,13 +42,6 @@ func (s *wide) add(o wide) {
 	s.w[2], _ = bits.Add64(s.w[2], o.w[2], c)
 }
 
-func (s *wide) sub(o wide) {
-	var b uint64
-	s.w[0], b = bits.Sub64(s.w[0], o.w[0], 0)
-	s.w[1], b = bits.Sub64(s.w[1], o.w[1], b)
-	s.w[2], _ = bits.Sub64(s.w[2], o.w[2], b)
-}
-
 func (s wide) float() float64 {
 	return math.Ldexp(float64(s.w[2]), 128) + math.Ldexp(float64(s.w[1]), 64) + float64(s.w[0])
 }

@@ -41,7 +41,7 @@ func ParseCRS(s string) (CRSRef, error) {
 	if t == "PLANE" {
 		return CRSRef{Plane: true, Projection: plane{}, CRS: planeCRS}, nil
 	}
-	authority, code := t, t
+	var authority, code string
 	if rest, ok := strings.CutPrefix(t, "URN:OGC:DEF:CRS:"); ok {
 		authority, code = ends(rest, ":")
 	} else if _, rest, ok := strings.Cut(t, "://WWW.OPENGIS.NET/DEF/CRS/"); ok {

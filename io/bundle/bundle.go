@@ -80,7 +80,7 @@ func Create(ctx context.Context, dir string, opt Options) (*Bundle, error) {
 	b := &Bundle{ctx: ctx, target: target, opt: opt, lock: lock, files: map[string]*file{}}
 	err = b.start()
 	if err != nil {
-		lock.Release()
+		_ = lock.Release() // the first error is the one to tell
 		return nil, err
 	}
 	b.mu.Lock()
@@ -157,7 +157,7 @@ func (b *Bundle) Commit(rec *record.Record) (err error) {
 	defer b.mu.Unlock()
 	defer func() {
 		if err != nil && b.state == open {
-			b.abort()
+			_ = b.abort() // the first error is the one to tell
 		}
 	}()
 	if err := b.usable(); err != nil {
@@ -185,7 +185,7 @@ func (b *Bundle) Commit(rec *record.Record) (err error) {
 	}
 	b.state = committed
 	b.detach()
-	b.lock.Release() // the bundle is there; a lock that stays is taken over later
+	_ = b.lock.Release() // the bundle is there; a lock that stays is taken over later
 	return nil
 }
 

@@ -58,7 +58,7 @@ func replaceable(target string, replace bool) error {
 	outline, err := outlineOf(target)
 	switch {
 	case err != nil:
-		return fmt.Errorf("bundle: %s exists and holds no earlier bundle, so it is not replaced; choose another place (%v): %w", target, err, ErrExists)
+		return fmt.Errorf("bundle: %s exists and holds no earlier bundle, so it is not replaced; choose another place (%w): %w", target, err, ErrExists)
 	case !replace:
 		return fmt.Errorf("bundle: %s holds an earlier bundle; choose another place or say --replace: %w", target, ErrExists)
 	}
@@ -134,7 +134,7 @@ func swap(work, target string) error {
 	// fail now, undoing the rename could lose both, so it stands.
 	_ = atomicfile.SyncDir(filepath.Dir(target))
 	if aside != "" {
-		os.RemoveAll(aside) // what stays is cleared by the next writer
+		_ = os.RemoveAll(aside) // what stays is cleared by the next writer
 	}
 	return nil
 }

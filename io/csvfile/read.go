@@ -2,6 +2,7 @@ package csvfile
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"io"
 	"os"
@@ -30,7 +31,8 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 	at := make([]int, len(columns))
 	for k, name := range columns {
 		if err := events.CheckNumeric(name, f.fields); err != nil {
-			if fault, ok := err.(*events.Fault); ok {
+			var fault *events.Fault
+			if errors.As(err, &fault) {
 				fault.File = f.path
 			}
 			return err
@@ -123,6 +125,5 @@ func number(cell string) float64 {
 // isRange accepts numbers too large to hold: they come out infinite and are
 // counted so.
 func isRange(err error) bool {
-	e, ok := err.(*strconv.NumError)
-	return ok && e.Err == strconv.ErrRange
+	return errors.Is(err, strconv.ErrRange)
 }

@@ -114,7 +114,7 @@ func (e *encoder) position(p pos) {
 	e.b = appendQuanta(e.b, p.y, e.decimals)
 	e.b = append(e.b, ']')
 	if len(e.b) > full {
-		e.flush()
+		_ = e.flush() // the error stays in the encoder
 	}
 }
 

@@ -141,7 +141,7 @@ func bandMetadata(o Options) string {
 	var b strings.Builder
 	item := func(name, role, value string) {
 		fmt.Fprintf(&b, `<Item name="%s" sample="0" role="%s">`, name, role)
-		xml.EscapeText(&b, []byte(value)) // a Builder does not fail
+		_ = xml.EscapeText(&b, []byte(value)) // a Builder does not fail
 		b.WriteString("</Item>")
 	}
 	b.WriteString("<GDALMetadata>")

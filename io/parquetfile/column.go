@@ -101,7 +101,7 @@ func (c *column) readOptional(dst []float64) error {
 func (c *column) nextPage() error {
 	for {
 		p, err := c.pages.next()
-		if err == io.EOF {
+		if errors.Is(err, io.EOF) {
 			return fmt.Errorf("%d rows fewer than the row group states", c.rows)
 		}
 		if err != nil {
@@ -182,7 +182,7 @@ func (c *column) finish() error {
 	for c.pages.off < c.pages.end {
 		h, err := c.pages.header()
 		if err != nil {
-			return nil // what follows the rows promised is no page: unused bytes
+			return nil //nolint:nilerr // what follows the rows promised is no page: unused bytes
 		}
 		if (h.typ == pageData || h.typ == pageDataV2) && h.values > 0 {
 			return errMoreRows

@@ -16,8 +16,8 @@ type series struct {
 }
 
 const (
-	chartWidth, chartHeight = 560, 300
-	chartLeft, chartRight   = 46, 150
+	chartWidth, chartHeight = 620, 300
+	chartLeft, chartRight   = 46, 190
 	chartTop, chartBottom   = 14, 48
 	chartSteps              = 64 // intervals between a quarter and four times H
 )
@@ -36,7 +36,7 @@ func tradeOff(a *record.AMISE) (template.HTML, bool) {
 		bias[i], variance[i] = c*c*a.SquaredBias/sum, a.Variance/c/sum
 		both[i] = bias[i] + variance[i]
 	}
-	return drawChart(x, []series{{"estimated error, the sum", "c-sum", both}, {"squared bias: smears out", "c-bias", bias}, {"variance: follows chance", "c-var", variance}},
+	return drawChart("plot-error", x, []series{{"estimated error: their sum", "c-sum", both}, {"squared bias: smeared", "c-bias", bias}, {"variance: left to chance", "c-var", variance}},
 		4, "times the estimated error at H",
 		"Squared bias rises and variance falls as H grows; their sum is least near the matrix used"), true
 }
@@ -57,7 +57,7 @@ func profile(p *Profile) (template.HTML, bool) {
 	for i, v := range p.Values {
 		y[i] = (v - lo) / (hi - lo)
 	}
-	return drawChart(p.Factors, []series{{shown(p.Name), "c-sum", y}}, 1, "least to greatest shown", "The criterion as a function of the factor of H"), true
+	return drawChart("plot-criterion", p.Factors, []series{{shown(p.Name), "c-sum", y}}, 1, "least to greatest shown", "The criterion as a function of the factor of H"), true
 }
 
 func chartFactors() []float64 {
@@ -70,14 +70,14 @@ func chartFactors() []float64 {
 
 // drawChart draws curves over log2 of the factor, y from 0 to top; what rises
 // above is cut off.
-func drawChart(x []float64, curves []series, top float64, unit, label string) template.HTML {
+func drawChart(id string, x []float64, curves []series, top float64, unit, label string) template.HTML {
 	m := &markup{}
 	lo, hi := math.Log2(x[0]), math.Log2(x[len(x)-1])
 	w, h := float64(chartWidth-chartLeft-chartRight), float64(chartHeight-chartTop-chartBottom)
 	px := func(c float64) float64 { return chartLeft + w*(math.Log2(c)-lo)/(hi-lo) }
 	py := func(v float64) float64 { return chartTop + h*(1-v/top) }
 	m.f(`<svg class="chart" viewBox="0 0 %d %d" role="img" aria-label="%s">`, chartWidth, chartHeight, html.EscapeString(label))
-	m.f(`<defs><clipPath id="plot"><rect x="%d" y="%d" width="%g" height="%g"/></clipPath></defs>`+"\n", chartLeft, chartTop, w, h)
+	m.f(`<defs><clipPath id="%s"><rect x="%d" y="%d" width="%g" height="%g"/></clipPath></defs>`+"\n", id, chartLeft, chartTop, w, h)
 	for v := range int(top) + 1 {
 		m.f(`<path class="axis" d="M%d %.1fh%.1f"/><text class="tick end" x="%d" y="%.1f">%d</text>`+"\n", chartLeft, py(float64(v)), w, chartLeft-6, py(float64(v))+4, v)
 	}
@@ -102,7 +102,7 @@ func drawChart(x []float64, curves []series, top float64, unit, label string) te
 		ends[i] = max(py(c.values[len(x)-1]), chartTop+8, last+16)
 		last = ends[i]
 	}
-	m.raw(`<g clip-path="url(#plot)">` + "\n")
+	m.f(`<g clip-path="url(#%s)">`+"\n", id)
 	for _, c := range curves {
 		m.raw(`<path class="curve ` + c.class + `" d="`)
 		for k := range x {

@@ -4,6 +4,7 @@ import (
 	"encoding/json"
 	"fmt"
 	"html/template"
+	"regexp"
 	"strings"
 )
 
@@ -21,7 +22,7 @@ func facts(p *Page) []factGroup {
 	}
 	rows = append(rows,
 		fact{"far from all others", data("run/rows/outside_extent", exact(float64(rec.Rows.OutsideExtent)), count(float64(rec.Rows.OutsideExtent)))},
-		fact{"effective events", data("run/tally/effective_events", exact(rec.Tally.EffectiveN), significant(rec.Tally.EffectiveN, 6))},
+		fact{"effective events", data("run/tally/effective_events", exact(rec.Tally.EffectiveN), level6(rec.Tally.EffectiveN))},
 	)
 	settings := []fact{}
 	for _, s := range rec.Settings {
@@ -59,7 +60,7 @@ func facts(p *Page) []factGroup {
 	}
 	g := rec.Guard
 	guard := []fact{
-		{"least events for a part, hole or peak", data("run/guard/min_events", exact(g.MinEvents), significant(g.MinEvents, 6))},
+		{"least events for a part, hole or peak", data("run/guard/min_events", exact(g.MinEvents), level6(g.MinEvents))},
 		{"parts kept back (regions, bands)", template.HTML(fmt.Sprintf("%d, %d", g.RegionParts, g.BandParts))},
 		{"holes kept back (regions, bands)", template.HTML(fmt.Sprintf("%d, %d", g.RegionHoles, g.BandHoles))},
 		{"peaks kept back", data("run/guard/peaks_withheld", fmt.Sprint(g.Peaks), fmt.Sprint(g.Peaks))},
@@ -121,13 +122,16 @@ var fileWhat = map[string]string{
 	"peaks.geojsonseq":    "the peaks, one feature a record",
 }
 
+// plainName is a file of the bundle that may be linked to.
+var plainName = regexp.MustCompile(`^[A-Za-z0-9_][A-Za-z0-9_./-]*$`)
+
 func fileRows(p *Page) (rows []fileRow) {
 	files := p.Files
 	if files == nil {
 		files = p.Record.Files
 	}
 	for _, f := range files {
-		rows = append(rows, fileRow{f.Name, fileWhat[f.Name], count(float64(f.Bytes)) + " bytes", f.SHA256})
+		rows = append(rows, fileRow{shown(f.Name), fileWhat[f.Name], count(float64(f.Bytes)) + " bytes", shown(f.SHA256), plainName.MatchString(f.Name)})
 	}
-	return append(rows, fileRow{Name: "run.json", What: "the record: how every number came about"})
+	return append(rows, fileRow{Name: "run.json", What: "the record: how every number came about", Link: true})
 }

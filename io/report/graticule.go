@@ -11,7 +11,8 @@ import (
 type gridLine struct {
 	runs  [][]point // parts inside the frame
 	label string
-	at    point // start of the label (parallels) or its middle (meridians)
+	at    point // where the label's text stands
+	side  int   // of that place: left, middle or right
 	ew    bool  // a meridian, or a line of equal x
 }
 
@@ -33,14 +34,13 @@ func graticule(f *frame, proj spatial.Projection) []gridLine {
 	if !ok {
 		return nil
 	}
-	span := max(box.lonHi-box.lonLo, box.latHi-box.latLo)
-	step := roundStep(span/graticuleWanted, !placeless)
 	var out []gridLine
 	for _, ew := range []bool{true, false} {
 		lo, hi := box.latLo, box.latHi
 		if ew {
 			lo, hi = box.lonLo, box.lonHi
 		}
+		step := roundStep((hi-lo)/graticuleWanted, !placeless)
 		first, last := math.Ceil(lo/step-1e-9), math.Floor(hi/step+1e-9)
 		if !(last-first < mostLines) {
 			continue
@@ -51,7 +51,7 @@ func graticule(f *frame, proj spatial.Projection) []gridLine {
 				continue
 			}
 			l.label = gridLabel(k*step, step, ew, placeless)
-			l.at = labelAt(f, l)
+			l.place(f)
 			out = append(out, l)
 		}
 	}
@@ -173,18 +173,33 @@ func clipLine(f *frame, l []spatial.XY) [][]spatial.XY {
 	return out
 }
 
-// labelAt puts a meridian's label at its lowest place and a parallel's at its
-// leftmost.
-func labelAt(f *frame, l gridLine) point {
-	best := l.runs[0][0]
-	for _, run := range l.runs {
-		for _, p := range run {
-			if l.ew && p.y > best.y || !l.ew && p.x < best.x {
-				best = p
+// place puts a meridian's label where it meets the lower border, else the
+// upper; a parallel's at the left, else the right. A line that meets neither,
+// or only near a corner, keeps no label.
+func (l *gridLine) place(f *frame) {
+	const near, corner, edge = 4, 240, 120 // drawing units
+	text := l.label
+	l.label = ""
+	for _, second := range []bool{false, true} {
+		for _, run := range l.runs {
+			for _, p := range run {
+				inX, inY := p.x > corner && p.x < f.w-corner, p.y > edge && p.y < f.h-edge
+				switch {
+				case l.ew && !second && inX && p.y > f.h-near:
+					l.at, l.side, l.label = point{p.x, f.h - 24}, middle, text
+				case l.ew && second && inX && p.y < near:
+					l.at, l.side, l.label = point{p.x, 60}, middle, text
+				case !l.ew && !second && inY && p.x < near:
+					l.at, l.side, l.label = point{20, p.y - 14}, left, text
+				case !l.ew && second && inY && p.x > f.w-near:
+					l.at, l.side, l.label = point{f.w - 20, p.y - 14}, right, text
+				}
+				if l.label != "" {
+					return
+				}
 			}
 		}
 	}
-	return best
 }
 
 func gridLabel(v, step float64, ew, placeless bool) string {

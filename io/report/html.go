@@ -33,6 +33,8 @@ const (
 	firstPeaks = 10  // rows of the table that are open at once
 	mostPeaks  = 100 // rows at all; the file has every peak
 	smallWidth = 300 // pixels of the maps side by side
+
+	mostLabelled = 12 // bands that each have a label in the legend
 )
 
 // WriteHTML writes report.html. Equal pages give equal bytes. Errors:
@@ -60,6 +62,7 @@ type view struct {
 	Caution              string
 	Map                  template.HTML
 	Legend               []legendRow
+	ManyBands            bool
 	Layers               []layer
 	Placeless, Weighted  bool
 	Regions              []regionRow
@@ -78,9 +81,9 @@ type view struct {
 }
 
 type legendRow struct {
-	Class string
-	Text  template.HTML
-	Area  string
+	Class      string
+	Text       template.HTML
+	Unlabelled bool // its text is for readers that cannot see, for want of room
 }
 type layer struct {
 	ID, Text, Class string
@@ -114,7 +117,10 @@ type factGroup struct {
 	Name  string
 	Facts []fact
 }
-type fileRow struct{ Name, What, Size, SHA string }
+type fileRow struct {
+	Name, What, Size, SHA string
+	Link                  bool
+}
 
 func newView(p *Page) *view {
 	rec := p.Record
@@ -129,12 +135,12 @@ func newView(p *Page) *view {
 	s := newScene(p, mapFrame(p, mapWidth, mapLeast, mapMost))
 	css := styleText + bandStyles(max(len(p.Release.Bands()), 1))
 	v := &view{
-		Title: shown(p.title()), Counted: p.counted(), Unit: u.name, CSS: template.CSS(css), JS: template.JS(scriptText),
+		Title: shown(p.title()), Counted: capital(p.counted()), Unit: u.name, CSS: template.CSS(css), JS: template.JS(scriptText),
 		Policy:  "default-src 'none'; script-src " + hashOf(scriptText) + "; style-src " + hashOf(css) + "; img-src data:; base-uri 'none'; form-action 'none'",
 		Words:   words(p, u),
 		Caution: record.Caution, Placeless: p.placeless(), Weighted: p.counted() != "events",
-		Map: mapSVG(p, s, u), Legend: legend(p, u), Layers: layers(p, s),
-		Regions: regionRows(p, u), Rule: rec.Regions.Text, Choices: choiceRows(p),
+		Map: mapSVG(p, s, u), Legend: legend(p, u), ManyBands: len(p.Release.Bands()) > mostLabelled, Layers: layers(p, s),
+		Regions: regionRows(p, u), Rule: shown(rec.Regions.Text), Choices: choiceRows(p),
 		Facts: facts(p), Files: fileRows(p), Run: runFacts(rec),
 	}
 	for _, t := range rec.Warnings {
@@ -179,16 +185,20 @@ func bandStyles(n int) string {
 
 func legend(p *Page, u areaUnit) (rows []legendRow) {
 	bands := p.Release.Bands()
+	every := 1
+	if len(bands) > mostLabelled {
+		every = (len(bands) + 9) / 10
+	}
 	for i := len(bands) - 1; i >= 0; i-- {
 		b := bands[i]
 		id := fmt.Sprintf("band-%d", i+1)
-		text := data(id+"/from_per_km2", same(b.FromPerKM2), significant(b.FromPerKM2*u.km2, 3))
+		text := data(id+"/from_per_km2", same(b.FromPerKM2), level(b.FromPerKM2*u.km2))
 		if math.IsInf(b.ToPerKM2, 0) {
 			text = "over " + text
 		} else {
-			text += " to " + data(id+"/to_per_km2", same(b.ToPerKM2), significant(b.ToPerKM2*u.km2, 3))
+			text += " to " + data(id+"/to_per_km2", same(b.ToPerKM2), level(b.ToPerKM2*u.km2))
 		}
-		rows = append(rows, legendRow{Class: fmt.Sprintf("b%d", i), Text: text, Area: areaText(b.AreaKM2)})
+		rows = append(rows, legendRow{Class: fmt.Sprintf("b%d", i), Text: text, Unlabelled: (len(bands)-1-i)%every != 0})
 	}
 	return rows
 }

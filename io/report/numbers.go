@@ -29,6 +29,25 @@ func significant(v float64, digits int) string {
 	return thousands(strconv.FormatFloat(r, 'f', after, 64))
 }
 
+// level prints a chosen number: up to three digits, no idle zeros.
+func level(v float64) string { return withoutIdleZeros(significant(v, 3)) }
+
+// level6 is level with six digits.
+func level6(v float64) string { return withoutIdleZeros(significant(v, 6)) }
+
+func withoutIdleZeros(s string) string {
+	if strings.Contains(s, ".") {
+		s = strings.TrimRight(strings.TrimRight(s, "0"), ".")
+	}
+	return s
+}
+
+// capital begins a word with a capital letter.
+func capital(s string) string {
+	r, n := utf8.DecodeRuneInString(s)
+	return string(unicode.ToUpper(r)) + s[n:]
+}
+
 // thousands sets commas between groups of three whole digits.
 func thousands(s string) string {
 	neg := strings.HasPrefix(s, "-")

@@ -105,7 +105,7 @@ func (p *Page) title() string {
 // counted returns what intensities count.
 func (p *Page) counted() string {
 	if p.Unit != "" {
-		return p.Unit
+		return shown(p.Unit)
 	}
 	if v, ok := p.Record.Settings.Get("weight"); ok && v != "" {
 		return "weight"

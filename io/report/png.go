@@ -6,7 +6,6 @@ import (
 	"image/png"
 	"io"
 	"math"
-	"strings"
 
 	"drumlin/io/record"
 )
@@ -115,9 +114,8 @@ func (d *painter) drawMap(s *scene, mapHeight float64) {
 		d.region(lines(r.rings), true, min(n-1-i, 3))
 	}
 	for _, l := range s.grid {
-		q := at(l.at)
-		if x, y, side, ok := gridTextAt(s, l, q, mapHeight); ok {
-			d.textHalo(x, y, 12, false, d.ink, l.label, side)
+		if q := at(l.at); l.label != "" {
+			d.textHalo(q[0], q[1], 12, false, d.ink, l.label, l.side)
 		}
 	}
 	if s.spread.on {
@@ -138,14 +136,6 @@ func (d *painter) drawMap(s *scene, mapHeight float64) {
 		d.text(b[0], b[1]+4.1, 11.5, true, d.mark, fmt.Sprint(m.rank), middle)
 	}
 	d.stroke([][][2]float64{{{picLeft, picTop}, {picLeft + picMap, picTop}, {picLeft + picMap, picTop + mapHeight}, {picLeft, picTop + mapHeight}}}, true, 1, d.ink, nil)
-}
-
-// gridTextAt puts labels of the graticule where the page has them.
-func gridTextAt(s *scene, l gridLine, q [2]float64, mapHeight float64) (x, y float64, side int, ok bool) {
-	if l.ew {
-		return q[0], picTop + mapHeight - 6, middle, l.at.y >= s.f.h-8 && l.at.x >= 240 && l.at.x <= s.f.w-160
-	}
-	return q[0] + 5, q[1] - 3.5, left, l.at.x <= 8 && l.at.y >= 60 && l.at.y <= s.f.h-110
 }
 
 // drawFoot draws the scale bar, north, the kernel and the caution.
@@ -189,7 +179,7 @@ func (d *painter) drawLegend(p *Page, mapHeight float64) {
 	for i, r := range regions {
 		y += 19
 		d.region([][][2]float64{{{x, y - 4}, {x + 38, y - 4}}}, false, min(i, 3))
-		d.text(x+48, y, 13, false, d.ink, fmt.Sprintf("holds %s: %s events,", contentText(r.Content), count(r.Events.Estimate)), left)
+		d.text(x+48, y, 13, false, d.ink, fmt.Sprintf("%s: %s events inside,", contentText(r.Content), count(r.Events.Estimate)), left)
 		y += 16
 		d.text(x+48, y, 13, false, d.ink, areaText(r.AreaKM2)+" in "+partsText(len(r.Plane)), left)
 	}
@@ -209,16 +199,16 @@ func (d *painter) drawLegend(p *Page, mapHeight float64) {
 	}
 	if len(bands) > 0 {
 		y += 36
-		d.text(x, y, 15, true, d.ink, strings.ToUpper(p.counted()[:1])+p.counted()[1:]+" per "+u.name, left)
+		d.text(x, y, 15, true, d.ink, capital(p.counted())+" per "+u.name, left)
 		y += 10
 	}
 	every := int(math.Ceil(14 / row))
 	for i := len(bands) - 1; i >= 0; i-- {
 		d.rect(x, y, 38, row, bandColour(i, len(bands), d.dark))
 		if (len(bands)-1-i)%every == 0 {
-			text := significant(bands[i].FromPerKM2*u.km2, 3) + " to " + significant(bands[i].ToPerKM2*u.km2, 3)
+			text := level(bands[i].FromPerKM2*u.km2) + " to " + level(bands[i].ToPerKM2*u.km2)
 			if math.IsInf(bands[i].ToPerKM2, 0) {
-				text = "over " + significant(bands[i].FromPerKM2*u.km2, 3)
+				text = "over " + level(bands[i].FromPerKM2*u.km2)
 			}
 			d.text(x+48, y+row/2+4.5, 13, false, d.ink, text, left)
 		}

@@ -76,7 +76,7 @@ func newScene(p *Page, f frame) *scene {
 		}
 	}
 	s.grid = graticule(&f, p.Projection)
-	s.placeMarks(p.Release.Peaks())
+	s.placeMarks(p.Release.Peaks(), smallParts(s.regions))
 	s.bar = barFor(&f)
 	if !p.placeless() {
 		s.north, s.hasNorth = northAt(&f, p.Projection), true
@@ -115,7 +115,7 @@ func mapFrame(p *Page, width, least, most int) frame {
 
 // placeMarks gives the highest peaks a number at their place, or beside it with
 // a leader where another stands too near.
-func (s *scene) placeMarks(peaks []spatial.Peak) {
+func (s *scene) placeMarks(peaks []spatial.Peak, avoid []point) {
 	n := min(len(peaks), mostMarks)
 	at := make([]point, n)
 	for i := range n {
@@ -124,7 +124,7 @@ func (s *scene) placeMarks(peaks []spatial.Peak) {
 	gap := 2*markRadius + areaMarks*perPixel
 	for i := range n {
 		m := mark{rank: peaks[i].Rank, at: at[i], label: at[i]}
-		best := s.crowding(m.label, at, i, gap)
+		best := s.crowding(m.label, at, i, gap, avoid)
 		for _, radius := range []float64{24, 36, 52, 72} {
 			if best == 0 {
 				break
@@ -135,7 +135,7 @@ func (s *scene) placeMarks(peaks []spatial.Peak) {
 				if q.x < markRadius || q.y < markRadius || q.x > s.f.w-markRadius || q.y > s.f.h-markRadius {
 					continue
 				}
-				if c := s.crowding(q, at, i, gap); c < best {
+				if c := s.crowding(q, at, i, gap, avoid); c < best {
 					best, m.label = c, q
 				}
 			}
@@ -147,10 +147,29 @@ func (s *scene) placeMarks(peaks []spatial.Peak) {
 	}
 }
 
+// smallParts returns the middles of parts of regions that a disc would hide.
+func smallParts(regions []regionShape) (out []point) {
+	for _, r := range regions {
+		for _, ring := range r.rings {
+			lo, hi := ring[0], ring[0]
+			for _, p := range ring {
+				lo, hi = point{min(lo.x, p.x), min(lo.y, p.y)}, point{max(hi.x, p.x), max(hi.y, p.y)}
+			}
+			if max(hi.x-lo.x, hi.y-lo.y) < 3*markRadius {
+				out = append(out, point{(lo.x + hi.x) / 2, (lo.y + hi.y) / 2})
+			}
+		}
+	}
+	return out
+}
+
 // crowding adds up how far a disc at q would reach into other discs and, half
-// as bad, over the places of other peaks.
-func (s *scene) crowding(q point, at []point, self int, gap float64) float64 {
+// as bad, over the places of other peaks and small parts of regions.
+func (s *scene) crowding(q point, at []point, self int, gap float64, avoid []point) float64 {
 	var sum float64
+	for _, p := range avoid {
+		sum += max(0, 2.2*markRadius-distance(q, p)) / 2
+	}
 	for _, m := range s.marks {
 		sum += max(0, gap-distance(q, m.label))
 	}

@@ -80,11 +80,11 @@ func mapSVG(p *Page, s *scene, u areaUnit) template.HTML {
 // bandText is what the map reads out for a band.
 func bandText(p *Page, i int, u areaUnit) string {
 	b := p.Release.Bands()[i]
-	from := significant(b.FromPerKM2*u.km2, 3)
+	from := level(b.FromPerKM2 * u.km2)
 	if math.IsInf(b.ToPerKM2, 0) {
 		return "more than " + from + " " + p.counted() + " per " + u.name
 	}
-	return from + " to " + significant(b.ToPerKM2*u.km2, 3) + " " + p.counted() + " per " + u.name
+	return from + " to " + level(b.ToPerKM2*u.km2) + " " + p.counted() + " per " + u.name
 }
 
 func (m *markup) graticule(s *scene) {
@@ -93,16 +93,10 @@ func (m *markup) graticule(s *scene) {
 		m.path("grid", l.runs, false, "")
 	}
 	for _, l := range s.grid {
-		x, y, anchor := l.at.x+20, l.at.y-14, "start"
-		if l.ew {
-			x, y, anchor = l.at.x, s.f.h-24, "middle"
-			if l.at.y < s.f.h-8 || x < 240 || x > s.f.w-160 {
-				continue // leaves by a side, or too near a corner
-			}
-		} else if l.at.x > 8 || y < 60 || y > s.f.h-110 {
+		if l.label == "" {
 			continue
 		}
-		m.f(`<text class="gridtext" x="%d" y="%d" text-anchor="%s">`, x, y, anchor)
+		m.f(`<text class="gridtext" x="%d" y="%d" text-anchor="%s">`, l.at.x, l.at.y, [...]string{"start", "middle", "end"}[l.side])
 		m.text(l.label)
 		m.raw("</text>\n")
 	}
@@ -167,7 +161,7 @@ func (m *markup) strip(s *scene) {
 	m.f("<g class=\"strip\" aria-hidden=\"true\">\n<path class=\"barline\" d=\"M%d %dv24h%dv-24M%d %dv-24\"/><path class=\"barfill\" d=\"M%d %dh%dv-12h%dz\"/>\n",
 		x, y, s.bar.units, x+s.bar.units/2, y+24, x, y+24, s.bar.units/2, -s.bar.units/2)
 	m.f(`<text class="striptext" x="%d" y="%d">0</text>`, x, y+84)
-	m.f(`<text class="striptext mid" x="%d" y="%d">%s</text>`, x+s.bar.units/2, y+84, html.EscapeString(s.bar.half))
+	m.f(`<text class="striptext mid half" x="%d" y="%d">%s</text>`, x+s.bar.units/2, y+84, html.EscapeString(s.bar.half))
 	m.f(`<text class="striptext mid" x="%d" y="%d">%s</text>`+"\n", x+s.bar.units, y+84, html.EscapeString(s.bar.text))
 	if s.hasNorth {
 		m.f(`<g transform="translate(%d %d) rotate(%.1f)"><path class="north" d="M0-84L28 20 0 0-28 20z"/></g><text class="striptext mid" x="%d" y="%d">N</text>`+"\n",

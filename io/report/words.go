@@ -154,7 +154,7 @@ func alternativeWords(p *Page) string {
 	for _, a := range p.Alternatives {
 		for _, q := range a.Regions {
 			if q.Content == r[0].Content {
-				parts = append(parts, fmt.Sprintf("with %s it would be %s", factorText(a.Factor), areaText(q.AreaKM2)))
+				parts = append(parts, fmt.Sprintf("with %s it would be %s", smoothingText(a.Factor), areaText(q.AreaKM2)))
 			}
 		}
 	}
@@ -162,6 +162,15 @@ func alternativeWords(p *Page) string {
 		return ""
 	}
 	return fmt.Sprintf("The %s region is %s; ", contentText(r[0].Content), areaText(r[0].AreaKM2)) + strings.Join(parts, ", ") + "."
+}
+
+// smoothingText says in words what a factor of H does.
+func smoothingText(c float64) string {
+	how := "more smoothing"
+	if c < 1 {
+		how = "less smoothing"
+	}
+	return how + " (" + factorText(c) + ")"
 }
 
 // factorText names c times H.
@@ -172,7 +181,7 @@ func factorText(c float64) string {
 	case c < 1 && 1/c == math.Round(1/c):
 		return fmt.Sprintf("H/%.0f", 1/c)
 	}
-	return significant(c, 3) + " H"
+	return level(c) + " H"
 }
 
 func withheldWords(w spatial.Withheld) (int, string) {

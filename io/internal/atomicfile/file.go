@@ -99,5 +99,5 @@ func (f *File) Abort() {
 	}
 	f.done = true
 	f.f.Close()
-	os.Remove(f.f.Name())
+	_ = os.Remove(f.f.Name()) // what stays is cleared by the next writer
 }

@@ -63,7 +63,7 @@ func Acquire(target string) (*Lock, error) {
 			continue
 		}
 		if err := sign(f); err != nil {
-			os.Remove(path)
+			_ = os.Remove(path)
 			f.Close()
 			return nil, err
 		}
