@@ -29,6 +29,7 @@ type Analysis struct {
 	BandLevels []float64   // rising densities, per square metre; the lowest is the edge of what is drawn
 
 	Peaks []Summit // highest first
+	Zones []ZoneArea
 }
 
 // Threshold is the density on the border of a highest density region.

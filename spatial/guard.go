@@ -89,6 +89,9 @@ func Guard(a Analysis, p Policy, proj Projection) (*Release, error) {
 			a.Events, p.MinEvents, ErrWithheld)
 	}
 	r.addPeaks(a, fams, p, proj)
+	if err := r.addZones(a, p, proj); err != nil {
+		return nil, err
+	}
 	return r, nil
 }
 

@@ -213,30 +213,7 @@ func (w *StudyArea) unite(flat MultiPolygon) (MultiPolygon, error) {
 		if err != nil {
 			return nil, fmt.Errorf("spatial: its polygons cannot be united: %s: %w", err, ErrStudyArea)
 		}
-		flat = flat[:0]
-		add := func(q geom.Polygon) {
-			var p Polygon
-			for _, r := range append([]geom.LineString{q.ExteriorRing()}, interiors(q)...) {
-				seq := r.Coordinates()
-				var ring Ring
-				for n := range seq.Length() - 1 {
-					ring = append(ring, XY{seq.GetXY(n).X, seq.GetXY(n).Y})
-				}
-				p = append(p, ring)
-			}
-			if p = w.snap(p); p != nil {
-				flat = append(flat, p)
-			}
-		}
-		switch {
-		case g.IsPolygon():
-			add(g.MustAsPolygon())
-		case g.IsMultiPolygon():
-			m := g.MustAsMultiPolygon()
-			for n := range m.NumPolygons() {
-				add(m.PolygonN(n))
-			}
-		}
+		flat = w.polygonsOf(g)
 	}
 	if len(flat) == 0 {
 		return nil, fmt.Errorf("spatial: nothing is left of its polygons on the plane: %w", ErrStudyArea)
@@ -249,6 +226,44 @@ func (w *StudyArea) unite(flat MultiPolygon) (MultiPolygon, error) {
 		return nil, fmt.Errorf("spatial: not valid on the plane: %s: %w", plainFault(err), ErrStudyArea)
 	}
 	return flat, nil
+}
+
+// polygonsOf returns the polygons of a geometry in whole units; what has no area
+// is left out.
+func (w *StudyArea) polygonsOf(g geom.Geometry) MultiPolygon {
+	var out MultiPolygon
+	add := func(q geom.Polygon) {
+		if q.IsEmpty() {
+			return
+		}
+		var p Polygon
+		for _, r := range append([]geom.LineString{q.ExteriorRing()}, interiors(q)...) {
+			seq := r.Coordinates()
+			var ring Ring
+			for n := range seq.Length() - 1 {
+				ring = append(ring, XY{seq.GetXY(n).X, seq.GetXY(n).Y})
+			}
+			p = append(p, ring)
+		}
+		if p = w.snap(p); p != nil {
+			out = append(out, p)
+		}
+	}
+	switch {
+	case g.IsPolygon():
+		add(g.MustAsPolygon())
+	case g.IsMultiPolygon():
+		m := g.MustAsMultiPolygon()
+		for n := range m.NumPolygons() {
+			add(m.PolygonN(n))
+		}
+	case g.IsGeometryCollection():
+		c := g.MustAsGeometryCollection()
+		for n := range c.NumGeometries() {
+			out = append(out, w.polygonsOf(c.GeometryN(n))...)
+		}
+	}
+	return out
 }
 
 func interiors(q geom.Polygon) []geom.LineString {

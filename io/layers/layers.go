@@ -72,8 +72,9 @@ func (l *Layer) Bound() (orb.Bound, bool) {
 	return b, any
 }
 
-// Names lists the layers of a release, in the order in which they are written.
-func Names() []string { return []string{"regions", "contours", "peaks"} }
+// Names lists the layers of a release, in the order in which they are written;
+// zones is empty unless they were asked for.
+func Names() []string { return []string{"regions", "contours", "peaks", "zones"} }
 
 // Of returns a layer of a release by name; it panics on an unknown one.
 func Of(r *spatial.Release, name string, m Meta) Layer {
@@ -84,6 +85,8 @@ func Of(r *spatial.Release, name string, m Meta) Layer {
 		return Contours(r, m)
 	case "peaks":
 		return Peaks(r, m)
+	case "zones":
+		return Zones(r, m)
 	}
 	panic("layers: no layer named " + name)
 }
@@ -129,6 +132,12 @@ func (t *table) number(name string, v float64) {
 
 func (t *table) count(c spatial.Count) {
 	const residue = 1e-6
+	if math.IsNaN(c.Estimate) { // withheld
+		for _, name := range []string{"events", "events_min", "events_max"} {
+			t.put(name, Whole, nil)
+		}
+		return
+	}
 	t.put("events", Whole, int64(math.Round(c.Estimate)))
 	t.put("events_min", Whole, int64(max(0, math.Floor(c.Min+residue))))
 	t.put("events_max", Whole, int64(math.Ceil(c.Max-residue)))
@@ -189,6 +198,27 @@ func Peaks(r *spatial.Release, m Meta) Layer {
 		t.exact("region", region)
 		t.number("effective_events", p.EffectiveEvents)
 		t.end("peak-"+strconv.Itoa(p.Rank), orb.Point{p.Position.Lon, p.Position.Lat})
+	}
+	return t.l
+}
+
+// Zones is the layer of named polygons.
+func Zones(r *spatial.Release, m Meta) Layer {
+	t := newTable(r, "zones", "named zones", m)
+	for i, z := range r.Zones() {
+		t.text("name", z.Name)
+		t.number("area_km2", z.AreaKM2)
+		t.number("expected", z.Expected)
+		t.count(z.Events)
+		t.number("event_share", z.EventShare)
+		t.number("mean_per_km2", z.MeanPerKM2)
+		t.number("highest_per_km2", z.HighestPerKM2)
+		t.text("withheld", z.Withheld)
+		id := z.ID
+		if id == "" {
+			id = "zone-" + strconv.Itoa(i+1)
+		}
+		t.end(id, z.Shape)
 	}
 	return t.l
 }

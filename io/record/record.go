@@ -25,6 +25,7 @@ type Record struct {
 	Bandwidth   Bandwidth     `json:"bandwidth"`
 	Regions     Regions       `json:"regions"`
 	StudyArea   *StudyArea    `json:"study_area,omitempty"`
+	Zones       *Zones        `json:"zones,omitempty"`
 	Sensitivity []Sensitivity `json:"sensitivity,omitempty"`
 	Guard       Guard         `json:"guard"`
 	Warnings    []string      `json:"warnings,omitempty"` // about this run
@@ -186,6 +187,14 @@ type StudyArea struct {
 	LeastInside float64 `json:"least_kernel_mass_at_events"`
 }
 
+// Zones is the file of named polygons that were reported on.
+type Zones struct {
+	File    string `json:"file"` // name without folder
+	Digest  Digest `json:"digest"`
+	Zones   int    `json:"zones"`
+	Outside int    `json:"outside_study_area"` // left out: nothing of them lies in it
+}
+
 // Sensitivity is what the regions would be at another multiple of H.
 type Sensitivity struct {
 	Factor  float64             `json:"factor"` // of H
@@ -210,6 +219,8 @@ type Guard struct {
 	BandHoles       int       `json:"band_holes_withheld"`
 	Peaks           int       `json:"peaks_withheld"`
 	RegionsWithheld []float64 `json:"regions_withheld"` // contents withheld whole
+	Zones           int       `json:"zones_withheld,omitempty"`
+	ZonesComplement int       `json:"zones_withheld_for_others,omitempty"` // so that those cannot be worked out
 }
 
 // File is one file of the bundle.

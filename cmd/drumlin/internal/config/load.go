@@ -31,6 +31,7 @@ func MapFlags(f *pflag.FlagSet) {
 	f.Float64("scale", 0, "a fixed bandwidth of scale h in metres, the same in all directions")
 	f.String("study-area", "", "GeoJSON polygons where events could be seen; the map ends there, and the estimate is corrected at the edge")
 	f.String("edge", "renormalise", "edge correction: renormalise (flat where events are evenly spread), conserve (keeps the total) or none")
+	f.String("zones", "", "GeoJSON polygons with names, such as districts: expected and recorded events of each, as zones.geojson")
 	f.String("content", "50,75,95", "contents of the highest density regions, per cent")
 	f.String("bands", "8", "how many isobands, or their levels in events per km2")
 	f.String("lattice", "auto", "nodes along the longer axis: auto (1024, up to 4096 until the minor scale spans 4 steps) or a number")

@@ -27,6 +27,7 @@ type Settings struct {
 
 	StudyArea string `mapstructure:"study-area"` // GeoJSON file, none if ""
 	Edge      string `mapstructure:"edge"`       // renormalise, conserve, none
+	Zones     string `mapstructure:"zones"`      // GeoJSON file, none if ""
 
 	Content    []float64 `mapstructure:"content"` // per cent
 	Bands      []float64 `mapstructure:"bands"`   // one whole number: how many; else levels, events per km2

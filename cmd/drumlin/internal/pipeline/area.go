@@ -287,3 +287,41 @@ func (r *run) warnDistortion(p spatial.Projection, e *Estimate) {
 	}
 	r.warnings = append(r.warnings, fmt.Sprintf("the extent is wide for one plane: towards its rim lengths are drawn %.3g to %.3g times true and angles are off by up to %.0f degrees, so the bandwidth there is not what it is at the centre; %s; map parts of it apart where that matters", d.ScaleLeast, d.ScaleGreatest, d.Angle, areas))
 }
+
+// readZones reads the zones and takes them to the plane, within the study area.
+func (r *run) readZones(in *reading) ([]spatial.ZoneArea, *record.Zones, error) {
+	path := r.settings.Zones
+	if path == "" {
+		return nil, nil, nil
+	}
+	named, digest, err := readPolygons(path, "zones", in.input.Plane)
+	if err != nil {
+		return nil, nil, err
+	}
+	rec := &record.Zones{File: filepath.Base(path), Digest: digest}
+	var out []spatial.ZoneArea
+	for i, n := range named {
+		name := n.Name("name", "NAME", "Name", "title", "label")
+		z := spatial.ZoneArea{ID: n.ID, Name: name}
+		z.Area, err = spatial.NewStudyArea(n.Shape, in.plane)
+		if err == nil && in.area != nil {
+			z.Area, err = in.area.plane.Within(z.Area)
+		}
+		if err != nil {
+			kind := events.ErrMalformed
+			if errors.Is(err, spatial.ErrUnsupportedGeometry) {
+				kind = events.ErrUnsupported
+			}
+			return nil, nil, &events.Fault{Kind: kind, File: path, What: fmt.Sprintf("zone %d %q cannot be used: %s", i+1, name, strings.TrimPrefix(err.Error(), "spatial: ")), Remedy: "repair the polygons"}
+		}
+		if z.Area == nil {
+			rec.Outside++
+			continue
+		}
+		out = append(out, z)
+	}
+	if rec.Zones = len(out); rec.Outside > 0 {
+		r.warnings = append(r.warnings, fmt.Sprintf("%d of %d zones lie outside the study area and were left out", rec.Outside, len(named)))
+	}
+	return out, rec, nil
+}

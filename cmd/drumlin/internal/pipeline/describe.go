@@ -53,6 +53,9 @@ func Describe(w io.Writer, res *Result) {
 	if a := rec.StudyArea; a != nil {
 		fmt.Fprintf(w, "Study area: %s km2; at its edge %s.\n", Significant(a.AreaKM2), a.Text)
 	}
+	if z := rec.Zones; z != nil {
+		fmt.Fprintf(w, "Zones: %d, of which %d without numbers because they hold few events, and %d so that those cannot be worked out.\n", z.Zones, rec.Guard.Zones, rec.Guard.ZonesComplement)
+	}
 	g := rec.Guard
 	if n := g.RegionParts + g.RegionHoles + g.BandParts + g.BandHoles + g.Peaks; n > 0 {
 		fmt.Fprintf(w, "Withheld because they rest on fewer than %g events: %d parts, holes or peaks.\n", g.MinEvents, n)

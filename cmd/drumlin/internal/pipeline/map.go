@@ -109,6 +109,11 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		return nil, err
 	}
 
+	zones, zoned, err := r.readZones(in)
+	if err != nil {
+		return nil, err
+	}
+
 	var counted *tallied
 	var est *Estimate
 	opt := r.tallyOptions(in)
@@ -154,6 +159,7 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 			return err
 		}
 		r.warnings = append(r.warnings, warnings...)
+		analysis.Zones = zones
 		release, err = spatial.Guard(analysis, spatial.Policy{MinEvents: r.settings.MinEvents, Workers: r.workers}, in.plane)
 		return err
 	})
@@ -167,6 +173,7 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		return nil, err
 	}
 	rec := r.record(in, counted, est, release, inputs)
+	rec.Zones = zoned
 	page := report.Page{Record: rec, Release: release, Projection: in.plane, Choices: choices(est)}
 	if r.settings.Sensitivity {
 		err := r.timed("sensitivity", func() (err error) {

@@ -28,8 +28,16 @@ func (r *run) outputs(ctx context.Context, rel *spatial.Release, proj spatial.Pr
 		{"geojson-seq", "contours.geojsons", func(w io.Writer) error { return geojson.WriteContoursSequence(w, rel, meta) }},
 		{"geojson-seq", "peaks.geojsons", func(w io.Writer) error { return geojson.WritePeaksSequence(w, rel, meta) }},
 	}
+	if len(rel.Zones()) > 0 {
+		out = append(out,
+			output{"geojson", "zones.geojson", func(w io.Writer) error { return geojson.WriteZones(w, rel, meta) }},
+			output{"geojson-seq", "zones.geojsons", func(w io.Writer) error { return geojson.WriteZonesSequence(w, rel, meta) }})
+	}
 	table := layers.Meta{Weighted: meta.Weighted, Unit: meta.Unit}
 	for _, name := range layers.Names() {
+		if name == "zones" && len(rel.Zones()) == 0 {
+			continue
+		}
 		out = append(out,
 			output{"flatgeobuf", name + ".fgb", func(w io.Writer) error { return flatgeobuf.Write(w, rel, name, table) }},
 			output{"geoparquet", name + ".parquet", func(w io.Writer) error { return geoparquet.Write(w, rel, name, table) }})

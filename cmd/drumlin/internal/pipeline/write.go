@@ -114,6 +114,14 @@ func (r *run) record(in *reading, c *tallied, e *Estimate, rel *spatial.Release,
 	return rec
 }
 
+// baseName is a file's name without its folder, "" for none.
+func baseName(path string) string {
+	if path == "" {
+		return ""
+	}
+	return filepath.Base(path)
+}
+
 func contents(perCent []float64) []float64 {
 	out := slices.Sorted(slices.Values(perCent))
 	for i := range out {
@@ -136,7 +144,7 @@ func (r *run) recordedSettings(in *reading) record.Settings {
 	}
 	return append(out, record.Settings{
 		{Name: "content", Value: slices.Sorted(slices.Values(s.Content))}, {Name: "bands", Value: s.Bands}, {Name: "lattice", Value: s.Lattice},
-		{Name: "study-area", Value: filepath.Base(s.StudyArea)}, {Name: "edge", Value: s.Edge},
+		{Name: "study-area", Value: baseName(s.StudyArea)}, {Name: "edge", Value: s.Edge}, {Name: "zones", Value: baseName(s.Zones)},
 		{Name: "region-rule", Value: s.RegionRule}, {Name: "min-events", Value: s.MinEvents}, {Name: "sensitivity", Value: s.Sensitivity}, {Name: "formats", Value: s.Formats},
 	}...)
 }
@@ -173,6 +181,7 @@ func guardRecord(rel *spatial.Release) record.Guard {
 	g := record.Guard{
 		MinEvents: w.MinEvents, RegionParts: w.RegionParts, RegionHoles: w.RegionHoles,
 		BandParts: w.BandParts, BandHoles: w.BandHoles, Peaks: w.Peaks, RegionsWithheld: w.Regions,
+		Zones: w.Zones, ZonesComplement: w.ZonesComplement,
 	}
 	if b := rel.Bands(); len(b) > 0 {
 		g.FloorPerKM2 = roundTo(b[0].FromPerKM2, 9)
