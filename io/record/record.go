@@ -218,7 +218,8 @@ type Guard struct {
 	BandParts       int       `json:"band_parts_withheld"`
 	BandHoles       int       `json:"band_holes_withheld"`
 	Peaks           int       `json:"peaks_withheld"`
-	RegionsWithheld []float64 `json:"regions_withheld"` // contents withheld whole
+	RegionsWithheld []float64 `json:"regions_withheld"`      // contents withheld whole
+	ClosePairs      []string  `json:"close_pairs,omitempty"` // a region and a contour that differ by few events
 	Zones           int       `json:"zones_withheld,omitempty"`
 	ZonesComplement int       `json:"zones_withheld_for_others,omitempty"` // so that those cannot be worked out
 }

@@ -165,6 +165,9 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 		if err := e.surface(true); err != nil {
 			return nil, err
 		}
+		if m.edge.area != nil && e.Choice.Method != "fixed" {
+			e.Choice.Notes = append(e.Choice.Notes, "chosen from the events as they are, without correction at the edge of the study area")
+		}
 		if e.BiasPilot, err = bandwidth.Hessian(bandwidth.Events{Spectrum: spectrum, Covariance: cov}); err != nil {
 			return nil, err
 		}
