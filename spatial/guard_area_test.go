@@ -221,3 +221,32 @@ func TestGuardAlignedBorder(t *testing.T) {
 		nearly(t, "aligned", sum*1e6, w.Area(), 1e-9)
 	}
 }
+
+// BenchmarkGuardWithin is BenchmarkGuard within a study area of 2,000 vertices.
+func BenchmarkGuardWithin(b *testing.B) {
+	s := newStudy(targetRing(), 1024, 1_000_000, 5000, rand.New(rand.NewPCG(1, 1)))
+	var xy []float64
+	for i := range 2000 {
+		a := 2 * math.Pi * float64(i) / 2000
+		d := 12000 + 2000*math.Sin(17*a)
+		xy = append(xy, d*math.Cos(a), d*math.Sin(a))
+	}
+	w := areaOf(b, [][]float64{xy})
+	step := s.Density.Step[0]
+	s.within(b, w, matrixOf(b, 64*step*step, 0, 64*step*step), false)
+	for _, r := range []int{1, 4} {
+		if r > 1 {
+			s.FineCounts = s.binned(r)
+		}
+		b.Run(fmt.Sprint("counts ", r, " times as fine"), func(b *testing.B) {
+			for b.Loop() {
+				release(b, s, 10, spatial.AutoPlane(10, 50))
+			}
+		})
+	}
+	b.Run("kernel mass", func(b *testing.B) {
+		for b.Loop() {
+			kernelMass(b, w, s.Density.Lattice, matrixOf(b, 64*step*step, 0, 64*step*step))
+		}
+	})
+}

@@ -34,6 +34,7 @@ func MapFlags(f *pflag.FlagSet) {
 	f.String("zones", "", "GeoJSON polygons with names, such as districts: expected and recorded events of each, as zones.geojson")
 	f.String("content", "50,75,95", "contents of the highest density regions, per cent")
 	f.String("bands", "8", "how many isobands, or their levels in events per km2")
+	f.String("band-content", "", "isobands by content instead: per cents such as 25,50,75,90, whose regions' borders are their edges")
 	f.String("lattice", "auto", "nodes along the longer axis: auto (1024, up to 4096 until the minor scale spans 4 steps) or a number")
 	f.String("region-rule", "events", "what a region's content counts: events (events not yet seen) or mass (of the estimate)")
 	f.Float64("min-events", 10, "least events that a released part, hole or peak rests on")

@@ -29,11 +29,15 @@ type Settings struct {
 	Edge      string `mapstructure:"edge"`       // renormalise, conserve, none
 	Zones     string `mapstructure:"zones"`      // GeoJSON file, none if ""
 
-	Content    []float64 `mapstructure:"content"` // per cent
-	Bands      []float64 `mapstructure:"bands"`   // one whole number: how many; else levels, events per km2
-	Lattice    string    `mapstructure:"lattice"` // auto or a number of nodes
-	RegionRule string    `mapstructure:"region-rule"`
-	MinEvents  float64   `mapstructure:"min-events"`
+	Content []float64 `mapstructure:"content"` // per cent
+	Bands   []float64 `mapstructure:"bands"`   // one whole number: how many; else levels, events per km2
+	// BandContent, when given, takes the place of Bands: the isobands' lower edges
+	// are the borders of the regions with these contents, per cent.
+	BandContent []float64 `mapstructure:"band-content"`
+
+	Lattice    string  `mapstructure:"lattice"` // auto or a number of nodes
+	RegionRule string  `mapstructure:"region-rule"`
+	MinEvents  float64 `mapstructure:"min-events"`
 
 	Sensitivity bool `mapstructure:"sensitivity"` // regions at H/2 and 2H too
 
@@ -123,6 +127,12 @@ func (s *Settings) Validate() error {
 			bad("content %g stands twice", c)
 		}
 		seen[c] = true
+	}
+	for i, c := range s.BandContent {
+		if !(c >= 1 && c <= 99.9) || slices.Contains(s.BandContent[:i], c) {
+			bad("band-content %v: give different per cents between 1 and 99.9", s.BandContent)
+			break
+		}
 	}
 	if n := s.BandCount(); n > 100 {
 		bad("bands is %d; at most 100", n)

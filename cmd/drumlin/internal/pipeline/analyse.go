@@ -78,7 +78,7 @@ func (e *Estimate) regionThreshold(atZero, content float64, rule string) (float6
 }
 
 func addThresholds(a *spatial.Analysis, e *Estimate, s *config.Settings) (warnings []string, err error) {
-	lone := a.KernelAtZero / e.EffectiveN * math.Exp(-loneScales*loneScales/2)
+	lone := e.lone()
 	contents := slices.Sorted(slices.Values(s.Content))
 	for _, c := range contents {
 		t, err := e.regionThreshold(a.KernelAtZero, c/100, s.RegionRule)
@@ -96,6 +96,9 @@ func addThresholds(a *spatial.Analysis, e *Estimate, s *config.Settings) (warnin
 
 // bandLevels returns the isobands' lower edges as densities, rising.
 func bandLevels(e *Estimate, s *config.Settings) ([]float64, error) {
+	if len(s.BandContent) > 0 {
+		return e.contentLevels(s)
+	}
 	unit := 1 / (e.Total * perKM2)
 	n := s.BandCount()
 	if n == 0 {
@@ -119,6 +122,27 @@ func bandLevels(e *Estimate, s *config.Settings) ([]float64, error) {
 		out = append(out, v*unit)
 	}
 	return out, nil
+}
+
+// contentLevels are the region borders of the contents asked for, rising.
+func (e *Estimate) contentLevels(s *config.Settings) ([]float64, error) {
+	atZero := e.KernelAtZero()
+	lone := e.lone()
+	var out []float64
+	for _, c := range s.BandContent {
+		t, err := e.regionThreshold(atZero, c/100, s.RegionRule)
+		if err != nil {
+			return nil, err
+		}
+		out = append(out, max(t, lone))
+	}
+	slices.Sort(out)
+	return slices.Compact(out), nil
+}
+
+// lone is the density that one event alone has loneScales scales away.
+func (e *Estimate) lone() float64 {
+	return e.KernelAtZero() / e.EffectiveN * math.Exp(-loneScales*loneScales/2)
 }
 
 // roundLevels returns n rising levels from about low to below top in equal

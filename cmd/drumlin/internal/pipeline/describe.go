@@ -60,6 +60,16 @@ func Describe(w io.Writer, res *Result) {
 	if n := g.RegionParts + g.RegionHoles + g.BandParts + g.BandHoles + g.Peaks; n > 0 {
 		fmt.Fprintf(w, "Withheld because they rest on fewer than %g events: %d parts, holes or peaks.\n", g.MinEvents, n)
 	}
+	if n := len(g.ClosePairs); n > 0 {
+		fmt.Fprintf(w, "%s by fewer than %g events: do not publish both, or choose --content and --bands further apart (the record names them).\n", pairs(n), g.MinEvents)
+	}
+}
+
+func pairs(n int) string {
+	if n == 1 {
+		return "One pair of a region and a contour differs"
+	}
+	return fmt.Sprintf("%d pairs of a region and a contour differ", n)
 }
 
 func parts(n int) string {

@@ -175,11 +175,6 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 	rec := r.record(in, counted, est, release, inputs)
 	rec.Zones = zoned
 	rec.Guard.ClosePairs = closePairs(release)
-	if n := len(rec.Guard.ClosePairs); n > 0 {
-		text := fmt.Sprintf("%d pairs of a region and a contour differ by fewer than %g events, so that one taken from the other points at few: %s; choose --content or --bands further apart before both are published", n, r.settings.MinEvents, rec.Guard.ClosePairs[0])
-		r.warnings = append(r.warnings, text)
-		rec.Warnings = append(rec.Warnings, text)
-	}
 	page := report.Page{Record: rec, Release: release, Projection: in.plane, Choices: choices(est)}
 	if r.settings.Sensitivity {
 		err := r.timed("sensitivity", func() (err error) {

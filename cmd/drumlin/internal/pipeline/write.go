@@ -143,7 +143,7 @@ func (r *run) recordedSettings(in *reading) record.Settings {
 		out = append(out, record.Setting{Name: "scale", Value: s.Scale})
 	}
 	return append(out, record.Settings{
-		{Name: "content", Value: slices.Sorted(slices.Values(s.Content))}, {Name: "bands", Value: s.Bands}, {Name: "lattice", Value: s.Lattice},
+		{Name: "content", Value: slices.Sorted(slices.Values(s.Content))}, {Name: "bands", Value: s.Bands}, {Name: "band-content", Value: slices.Sorted(slices.Values(s.BandContent))}, {Name: "lattice", Value: s.Lattice},
 		{Name: "study-area", Value: baseName(s.StudyArea)}, {Name: "edge", Value: s.Edge}, {Name: "zones", Value: baseName(s.Zones)},
 		{Name: "region-rule", Value: s.RegionRule}, {Name: "min-events", Value: s.MinEvents}, {Name: "sensitivity", Value: s.Sensitivity}, {Name: "formats", Value: s.Formats},
 	}...)
