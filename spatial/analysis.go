@@ -14,6 +14,11 @@ type Analysis struct {
 	// than two steps of Counts can hold no event for certain.
 	FineCounts mv.Grid
 
+	// Area, when given, is where events could be observed: all events lie in it,
+	// the density goes on a few nodes beyond its border, and regions, bands and
+	// surface end there.
+	Area *StudyArea
+
 	Events float64 // events mapped, n
 	Total  float64 // their total weight; Events when the run has no weights
 
@@ -24,6 +29,7 @@ type Analysis struct {
 	BandLevels []float64   // rising densities, per square metre; the lowest is the edge of what is drawn
 
 	Peaks []Summit // highest first
+	Zones []ZoneArea
 }
 
 // Threshold is the density on the border of a highest density region.
@@ -37,7 +43,8 @@ type Summit struct {
 	At            XY
 	Density       float64
 	StandardError float64
-	SmoothingBias float64 // leading term ½ tr(H Hess f)
+	SmoothingBias float64 // leading term ½ tr(H Hess f); NaN where an edge makes it unknown
+	Inside        float64 // kernel mass within the study area there; 0 means all
 }
 
 // Policy is what the guard enforces.

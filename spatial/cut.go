@@ -45,16 +45,23 @@ const (
 // as a side, from -180 to 180 at latitude 90. Cost: one inverse per vertex plus
 // O(n log n).
 func ToShape(mp MultiPolygon, proj Projection) (orb.MultiPolygon, error) {
+	return toShape(mp, proj, false)
+}
+
+// toShape is ToShape; with lax, rings may touch (a study area's border may).
+func toShape(mp MultiPolygon, proj Projection, lax bool) (orb.MultiPolygon, error) {
 	var rings []Ring
 	for _, p := range mp {
 		rings = append(rings, p...)
 	}
-	grid, err := roundRings(rings, proj)
+	grid, err := roundAll(rings, proj, lax)
 	if err != nil {
 		return nil, err
 	}
-	if err := checkRings(grid); err != nil {
-		return nil, fmt.Errorf("spatial: shape: %w", err)
+	if !lax {
+		if err := checkRings(grid); err != nil {
+			return nil, fmt.Errorf("spatial: shape: %w", err)
+		}
 	}
 	o := make(outline, len(mp))
 	n := int32(0)
@@ -71,6 +78,12 @@ func ToShape(mp MultiPolygon, proj Projection) (orb.MultiPolygon, error) {
 // one call of Inverse. A ring that vanishes becomes nil. Longitudes of a ring
 // are continuous.
 func roundRings(rings []Ring, proj Projection) ([]gridRing, error) {
+	return roundAll(rings, proj, false)
+}
+
+// roundAll is roundRings; with shared, stretches that rings have in common come
+// out the same in all of them.
+func roundAll(rings []Ring, proj Projection, shared bool) ([]gridRing, error) {
 	out := make([]gridRing, len(rings))
 	if proj.CRS().Method == "plane" {
 		for r, ring := range rings {
@@ -94,6 +107,7 @@ func roundRings(rings []Ring, proj Projection) ([]gridRing, error) {
 	}
 	ll := proj.Inverse(xy)
 	b := newBender(proj)
+	b.all = shared
 	first := 0
 	for r, ring := range rings {
 		lon, lat := ll.Lon[first:first+len(ring)], ll.Lat[first:first+len(ring)]

@@ -9,7 +9,8 @@ import (
 // where a straight chord of the plane is bent in degrees.
 type bender struct {
 	proj Projection
-	one  XYs // a single position, reused
+	all  bool // look at every chord: rings share some, and must agree on them
+	one  XYs  // a single position, reused
 }
 
 func newBender(p Projection) *bender {
@@ -25,7 +26,7 @@ func (b *bender) inverse(p XY) LonLat {
 // ring rounds one ring whose vertices stand at lon, lat; longitudes are made
 // continuous from the first vertex on.
 func (b *bender) ring(xy Ring, lon, lat []float64) (gridRing, error) {
-	bent := b.sample(xy, lon, lat)
+	bent := b.all || b.sample(xy, lon, lat)
 	out := make(gridRing, 0, len(xy))
 	shift, before := 0.0, 0.0
 	for i, x := range lon {

@@ -52,4 +52,14 @@
 // ToShape rounds to 1e-7 degree, cuts at the antimeridian and goes over poles;
 // that no two rings meet is checked in whole numbers. Sources: the asymptotic
 // decider, Nielson and Hamann 1991 (from memory); RFC 7946; OGC 06-103r4.
+//
+// # Study area
+//
+// StudyArea is where events could be observed. KernelMass gives p_H(x), the part
+// of a kernel that lies inside; Renormalise divides the density by it, Conserve
+// weights the events by its inverse. With Analysis.Area, Guard cuts the study
+// area into faces by the level curves and releases nothing beyond its border.
+// Cost: Mask O(nodes + border cells), KernelMass two transforms, the cut
+// O((vertices + border cells) log). Sources: Diggle 1985 and Jones 1993 for the
+// two corrections; Green's theorem for integrals over faces.
 package spatial

@@ -78,18 +78,7 @@ func (m *measure) boundFine(s *Isolines, counts mv.Grid) error {
 			countFine(&chunks[c], counts, hi*r, below, r-1, nil, 0)
 		}
 	})
-	clear(m.whole)
-	m.border, m.touch = nil, nil
-	for c := range chunks {
-		for _, f := range chunks[c].sums {
-			m.whole[f.face] += f.count
-		}
-		base := int32(len(m.touch))
-		for _, b := range chunks[c].border {
-			m.border = append(m.border, borderNode{b.count, b.first + base, b.last + base})
-		}
-		m.touch = append(m.touch, chunks[c].touch...)
-	}
+	m.collect(chunks)
 	return nil
 }
 

@@ -8,6 +8,8 @@ import (
 	"sync"
 
 	"drumlin/mv"
+
+	"github.com/paulmach/orb"
 )
 
 // ErrWithheld reports that the small-number guard left nothing to release.
@@ -87,6 +89,9 @@ func Guard(a Analysis, p Policy, proj Projection) (*Release, error) {
 			a.Events, p.MinEvents, ErrWithheld)
 	}
 	r.addPeaks(a, fams, p, proj)
+	if err := r.addZones(a, p, proj); err != nil {
+		return nil, err
+	}
 	return r, nil
 }
 
@@ -126,12 +131,21 @@ func sameLattice(a, b mv.Lattice) bool {
 // family is a set of levels drawn together, after the guard.
 type family struct {
 	s     *Isolines
+	c     *clip // nil without a study area
 	m     *measure
 	d     *dissolved
+	areas []float64 // per face
 	atOr  []outline // per level, where the label is above it
 	equal []outline // per label, where it is just that; index 0 unused
 	grid  []gridRing
-	kept  []int // level of each released region
+	cut   [2][]cutShape // with a study area: the same two as shapes
+	kept  []int         // level of each released region
+}
+
+// cutShape is an outline within the study area, on the plane and in degrees.
+type cutShape struct {
+	plane MultiPolygon
+	shape orb.MultiPolygon
 }
 
 // clampFor keeps vertices about 5 cm from nodes and from each other, so that
@@ -153,40 +167,101 @@ func drawFamily(a Analysis, levels []float64, p Policy, proj Projection) (*famil
 		if err != nil {
 			return nil, err
 		}
-		m, err := s.measure(a.Counts, a.Weights)
-		if err != nil {
-			return nil, err
+		var f *family
+		if a.Area != nil {
+			f, err = drawClipped(a, s, p, proj)
+		} else {
+			f, err = drawOpen(a, s, p, proj)
 		}
-		if len(a.FineCounts.Values) > 0 {
-			if err := m.boundFine(s, a.FineCounts); err != nil {
-				return nil, err
-			}
-		}
-		f := &family{s: s, m: m, d: s.dissolve(m, p.MinEvents), grid: make([]gridRing, len(s.rings))}
-		for k := range levels {
-			f.atOr = append(f.atOr, s.outline(f.d.in(func(label int) bool { return label > k })))
-		}
-		for k := range len(levels) + 1 {
-			f.equal = append(f.equal, s.outline(f.d.in(func(label int) bool { return label == k && k > 0 })))
-		}
-		ids := used(append(slices.Clone(f.atOr), f.equal...)...)
-		rings := make([]Ring, len(ids))
-		for n, id := range ids {
-			rings[n] = s.ringXY(int(id), true)
-		}
-		rounded, err := roundRings(rings, proj)
-		if err != nil {
-			return nil, err
-		}
-		if touching = checkRings(rounded); touching != nil {
+		if errors.Is(err, errTouch) || errors.Is(err, errClip) || errors.Is(err, errNotValid) {
+			touching = err
 			continue
 		}
-		for n, id := range ids {
-			f.grid[id] = rounded[n]
-		}
-		return f, nil
+		return f, err
 	}
 	return nil, fmt.Errorf("spatial: guard: lattice step %g m: %w; use a coarser lattice", min(a.Density.Step[0], a.Density.Step[1]), touching)
+}
+
+// drawOpen does it without a study area.
+func drawOpen(a Analysis, s *Isolines, p Policy, proj Projection) (*family, error) {
+	m, err := s.measure(a.Counts, a.Weights)
+	if err != nil {
+		return nil, err
+	}
+	if len(a.FineCounts.Values) > 0 {
+		if err := m.boundFine(s, a.FineCounts); err != nil {
+			return nil, err
+		}
+	}
+	f := &family{s: s, m: m, d: s.dissolve(m, p.MinEvents), areas: s.area, grid: make([]gridRing, len(s.rings))}
+	for k := range s.levels {
+		f.atOr = append(f.atOr, s.outline(f.d.in(func(label int) bool { return label > k })))
+	}
+	for k := range len(s.levels) + 1 {
+		f.equal = append(f.equal, s.outline(f.d.in(func(label int) bool { return label == k && k > 0 })))
+	}
+	ids := used(append(slices.Clone(f.atOr), f.equal...)...)
+	rings := make([]Ring, len(ids))
+	for n, id := range ids {
+		rings[n] = s.ringXY(int(id), true)
+	}
+	rounded, err := roundRings(rings, proj)
+	if err != nil {
+		return nil, err
+	}
+	if err := checkRings(rounded); err != nil {
+		return nil, err
+	}
+	for n, id := range ids {
+		f.grid[id] = rounded[n]
+	}
+	return f, nil
+}
+
+// drawClipped does it within the study area.
+func drawClipped(a Analysis, s *Isolines, p Policy, proj Projection) (*family, error) {
+	c, err := newClip(s, a.Area)
+	if err != nil {
+		return nil, err
+	}
+	m, err := c.measure(a.Density, a.Counts, a.Weights, a.FineCounts, p.Workers)
+	if err != nil {
+		return nil, err
+	}
+	f := &family{s: s, c: c, m: m, d: c.dissolve(m, p.MinEvents), areas: c.area}
+	add := func(n int, ok func(label int) bool) error {
+		var q cutShape
+		var err error
+		if q.plane, err = c.outline(f.d.in(ok)); err == nil {
+			q.shape, err = clippedShape(q.plane, proj)
+		}
+		f.cut[n] = append(f.cut[n], q)
+		return err
+	}
+	for k := range s.levels {
+		if err := add(0, func(label int) bool { return label > k }); err != nil {
+			return nil, err
+		}
+	}
+	for k := range len(s.levels) + 1 {
+		if err := add(1, func(label int) bool { return label == k && k > 0 }); err != nil {
+			return nil, err
+		}
+	}
+	return f, nil
+}
+
+// errNotValid reports a shape that the second judge rejects.
+var errNotValid = errors.New("shape is not valid")
+
+// clippedShape is ToShape for polygons that end at a border, which may touch
+// itself: the judge of validity then has the last word.
+func clippedShape(mp MultiPolygon, proj Projection) (orb.MultiPolygon, error) {
+	shape, err := toShape(mp, proj, true)
+	if err == nil {
+		err = checkOGC(shape)
+	}
+	return shape, err
 }
 
 // releaseSurface returns the intensity at the nodes, held within the bands.
@@ -198,22 +273,44 @@ func releaseSurface(a Analysis, fams [2]*family, p Policy, proj Projection) Surf
 	out := Surface{Grid: mv.NewGrid(a.Density.Lattice), CRS: proj.CRS()}
 	levels := f.s.levels
 	scale := a.Total * perKM2
+	hold := func(k, lo, hi int, from, to []float64) {
+		if k == 0 {
+			return
+		}
+		least, most := levels[k-1]*scale, math.Inf(1)
+		if k < len(levels) {
+			most = levels[k] * scale
+		}
+		for i := lo; i < hi; i++ {
+			to[i] = min(max(from[i]*scale, least), most)
+		}
+	}
+	if f.c != nil {
+		f.c.eachNodeRow(p.Workers, func(j int, changes rowFaces) {
+			from, to := a.Density.Values[j*f.s.nx:(j+1)*f.s.nx], out.Values[j*f.s.nx:(j+1)*f.s.nx]
+			for i := range to {
+				to[i] = math.NaN()
+			}
+			for n, c := range changes {
+				hi := float64(f.s.nx)
+				if n+1 < len(changes) {
+					hi = changes[n+1].x
+				}
+				if c.face >= 0 {
+					lo, hi := max(0, int(math.Ceil(c.x))), min(f.s.nx, int(math.Ceil(hi)))
+					for i := lo; i < hi; i++ {
+						to[i] = 0
+					}
+					hold(int(f.d.label[c.face]), lo, hi, from, to)
+				}
+			}
+		})
+		return out
+	}
 	forChunks(f.s.ny, p.Workers, func(_, lo, hi int) {
 		for j := lo; j < hi; j++ {
 			from, to := a.Density.Values[j*f.s.nx:], out.Values[j*f.s.nx:]
-			f.s.eachRun(j, func(lo, hi int, face int32) {
-				k := int(f.d.label[face])
-				if k == 0 {
-					return
-				}
-				least, most := levels[k-1]*scale, math.Inf(1)
-				if k < len(levels) {
-					most = levels[k] * scale
-				}
-				for i := lo; i < hi; i++ {
-					to[i] = min(max(from[i]*scale, least), most)
-				}
-			})
+			f.s.eachRun(j, func(lo, hi int, face int32) { hold(int(f.d.label[face]), lo, hi, from, to) })
 		}
 	})
 	return out

@@ -26,60 +26,17 @@ func (d *dissolved) in(ok func(label int) bool) func(face int32) bool {
 // plus, for each join, the border nodes of the face that goes.
 func (s *Isolines) dissolve(m *measure, least float64) *dissolved {
 	n := len(s.label)
-	d := &dissolved{into: make([]int32, n), label: make([]uint8, n)}
-	for f := range d.into {
-		d.into[f] = int32(f)
-	}
+	d := &dissolved{label: make([]uint8, n)}
 	copy(d.label, s.label)
+	j := newJoiner(m, n)
+	d.into = j.into
 	if !(least > 1) {
 		return d
-	}
-	find := func(f int32) int32 {
-		for d.into[f] != f {
-			d.into[f] = d.into[d.into[f]]
-			f = d.into[f]
-		}
-		return f
-	}
-	sure := append([]float64(nil), m.whole...)
-	settled := make([]bool, len(m.border)) // already added to a face
-	open := make([][]int32, n)             // border nodes that touch the face and others
-	for b, node := range m.border {
-		ts := m.touch[node.first:node.last]
-		if len(ts) == 1 {
-			sure[ts[0].face] += node.count // pieces of one face
-			settled[b] = true
-			continue
-		}
-		for _, t := range ts {
-			open[t.face] = append(open[t.face], int32(b))
-		}
 	}
 	inside := make([][]int32, n) // faces directly inside
 	for f := 1; f < n; f++ {
 		o := s.outer[f-1]
 		inside[o] = append(inside[o], int32(f))
-	}
-	join := func(f, to int32) {
-		d.into[f] = to
-		sure[to] += sure[f]
-		for _, b := range open[f] {
-			if settled[b] {
-				continue
-			}
-			node := m.border[b]
-			one := true
-			for _, t := range m.touch[node.first:node.last] {
-				one = one && find(t.face) == to
-			}
-			if one {
-				sure[to] += node.count
-				settled[b] = true
-			} else {
-				open[to] = append(open[to], b)
-			}
-		}
-		open[f] = nil
 	}
 	drop := func(f int32) {
 		if s.rings[f-1].high {
@@ -89,21 +46,21 @@ func (s *Isolines) dissolve(m *measure, least float64) *dissolved {
 		}
 	}
 	for _, f := range s.byDepth {
-		if find(f) != f || sure[f] >= least {
+		if j.find(f) != f || j.sure[f] >= least {
 			continue
 		}
 		to := s.outer[f-1]
 		drop(f)
-		join(f, to)
+		j.join(f, to)
 		for _, h := range inside[f] {
-			if find(h) == to {
+			if j.find(h) == to {
 				continue // went into f before
 			}
 			if s.label[h] == s.label[to] {
 				drop(h)
-				join(h, to)
+				j.join(h, to)
 				for _, g := range inside[h] {
-					if find(g) != to {
+					if j.find(g) != to {
 						inside[to] = append(inside[to], g)
 					}
 				}
@@ -114,7 +71,7 @@ func (s *Isolines) dissolve(m *measure, least float64) *dissolved {
 		inside[f] = nil
 	}
 	for f := range d.into {
-		d.into[f] = find(int32(f))
+		d.into[f] = j.find(int32(f))
 	}
 	for f := range d.label {
 		d.label[f] = s.label[d.into[f]]

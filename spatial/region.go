@@ -14,13 +14,12 @@ func (r *Release) addRegions(a Analysis, f *family, levels []float64, proj Proje
 	slices.SortStableFunc(rising, func(x, y Threshold) int { return cmp.Compare(x.Content, y.Content) })
 	for _, t := range rising {
 		k, _ := slices.BinarySearch(levels, t.Density)
-		o := f.atOr[k]
 		if !f.adds(k) {
 			r.withheld.Regions = append(r.withheld.Regions, t.Content)
 			continue
 		}
 		in := f.d.in(func(label int) bool { return label > k })
-		out := Region{Content: t.Content, Rule: a.RegionRule, ThresholdPerKM2: f.s.levels[k] * a.Total * perKM2, Plane: f.s.polygons(o)}
+		out := Region{Content: t.Content, Rule: a.RegionRule, ThresholdPerKM2: f.s.levels[k] * a.Total * perKM2}
 		out.Mass, out.Events, out.Weight = f.m.union(in)
 		area := f.area(in)
 		out.AreaKM2 = area / perKM2
@@ -29,7 +28,7 @@ func (r *Release) addRegions(a Analysis, f *family, levels []float64, proj Proje
 			out.EventShare = out.Events.Estimate / a.Events
 		}
 		var err error
-		if out.Shape, err = f.shape(o, proj); err != nil {
+		if out.Plane, out.Shape, err = f.above(k, proj); err != nil {
 			return err
 		}
 		if !proj.EqualArea() {
@@ -44,19 +43,18 @@ func (r *Release) addRegions(a Analysis, f *family, levels []float64, proj Proje
 // addBands builds the released bands in rising intensity.
 func (r *Release) addBands(a Analysis, f *family, proj Projection) error {
 	for k := 1; k <= len(f.s.levels); k++ {
-		o := f.equal[k]
-		if len(o) == 0 {
+		if !f.adds(k - 1) {
 			continue
 		}
 		in := f.d.in(func(label int) bool { return label == k })
-		out := Band{FromPerKM2: f.s.levels[k-1] * a.Total * perKM2, ToPerKM2: math.Inf(1), Plane: f.s.polygons(o)}
+		out := Band{FromPerKM2: f.s.levels[k-1] * a.Total * perKM2, ToPerKM2: math.Inf(1)}
 		if k < len(f.s.levels) {
 			out.ToPerKM2 = f.s.levels[k] * a.Total * perKM2
 		}
 		out.Mass, out.Events, _ = f.m.union(in)
 		out.AreaKM2 = f.area(in) / perKM2
 		var err error
-		if out.Shape, err = f.shape(o, proj); err != nil {
+		if out.Plane, out.Shape, err = f.between(k, proj); err != nil {
 			return err
 		}
 		if !proj.EqualArea() {
@@ -92,6 +90,24 @@ func (f *family) shape(o outline, proj Projection) (orb.MultiPolygon, error) {
 	return mp, nil
 }
 
+// above returns where the released label is above level k.
+func (f *family) above(k int, proj Projection) (MultiPolygon, orb.MultiPolygon, error) {
+	if f.c != nil {
+		return f.cut[0][k].plane, f.cut[0][k].shape, nil
+	}
+	shape, err := f.shape(f.atOr[k], proj)
+	return f.s.polygons(f.atOr[k]), shape, err
+}
+
+// between returns where the released label is k.
+func (f *family) between(k int, proj Projection) (MultiPolygon, orb.MultiPolygon, error) {
+	if f.c != nil {
+		return f.cut[1][k].plane, f.cut[1][k].shape, nil
+	}
+	shape, err := f.shape(f.equal[k], proj)
+	return f.s.polygons(f.equal[k]), shape, err
+}
+
 // adds reports whether any face has just the label above level k, so that the
 // region there holds more than the next smaller one.
 func (f *family) adds(k int) bool { return slices.Contains(f.d.label, uint8(k+1)) }
@@ -99,7 +115,7 @@ func (f *family) adds(k int) bool { return slices.Contains(f.d.label, uint8(k+1)
 // area adds up the faces of a set, square metres.
 func (f *family) area(in func(face int32) bool) float64 {
 	var sum float64
-	for n, v := range f.s.area {
+	for n, v := range f.areas {
 		if in(int32(n)) {
 			sum += v
 		}
@@ -108,13 +124,24 @@ func (f *family) area(in func(face int32) bool) float64 {
 }
 
 // labelAt returns the released label at a position.
-func (f *family) labelAt(at XY) int { return int(f.d.label[f.s.Locate(at)]) }
+func (f *family) labelAt(at XY) int {
+	if f.c == nil {
+		return int(f.d.label[f.s.Locate(at)])
+	}
+	if face := f.c.locate(at); face >= 0 {
+		return int(f.d.label[face])
+	}
+	return 0
+}
 
 // addPeaks keeps the peaks that rest on enough events and lie in something
 // released, ranked by intensity.
 func (r *Release) addPeaks(a Analysis, fams [2]*family, p Policy, proj Projection) {
 	for _, t := range a.Peaks {
 		effective := a.Events * t.Density / a.KernelAtZero
+		if t.Inside > 0 {
+			effective *= t.Inside
+		}
 		region, band := fams[0].labelAt(t.At), fams[1].labelAt(t.At)
 		if !(effective >= p.MinEvents) || region+band == 0 && len(a.Regions)+len(a.BandLevels) > 0 {
 			r.withheld.Peaks++

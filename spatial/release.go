@@ -75,6 +75,9 @@ type Withheld struct {
 	BandHoles   int
 	Peaks       int
 	Regions     []float64 // contents of regions withheld whole
+
+	Zones           int // zones without numbers because they hold few events
+	ZonesComplement int // and so that those cannot be worked out
 }
 
 // Release is what may leave the program. Guard is its only constructor, and
@@ -83,6 +86,7 @@ type Release struct {
 	regions  []Region
 	bands    []Band
 	peaks    []Peak
+	zones    []Zone
 	surface  Surface
 	withheld Withheld
 	crs      CRS
@@ -96,6 +100,9 @@ func (r *Release) Bands() []Band { return r.bands }
 
 // Peaks returns the released peaks by rank.
 func (r *Release) Peaks() []Peak { return r.peaks }
+
+// Zones returns the zones in the order given, none when none were asked for.
+func (r *Release) Zones() []Zone { return r.zones }
 
 // Surface returns the released surface.
 func (r *Release) Surface() Surface { return r.surface }

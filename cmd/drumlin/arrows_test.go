@@ -27,6 +27,7 @@ gonum/optimize = gonum.org/v1/gonum/optimize
 orb            = github.com/paulmach/orb
 simplefeatures = github.com/peterstace/simplefeatures
 arrow          = github.com/apache/arrow/go/v17
+flatbuffers    = github.com/google/flatbuffers
 packing        = github.com/klauspost/compress, github.com/pierrec/lz4/v4
 cobra          = github.com/spf13/cobra
 viper          = github.com/spf13/viper, github.com/go-viper/mapstructure/v2, github.com/spf13/pflag
@@ -34,9 +35,10 @@ terminal       = golang.org/x/term
 drawing        = golang.org/x/image
 testscript     = github.com/rogpeppe/go-internal
 
-arrow readers  = io/parquetfile, io/arrowfile, io/geoparquet
+arrow readers  = io/parquetfile, io/arrowfile
 plain readers  = io/csvfile
-writers        = io/geojson, io/geotiff, io/flatgeobuf
+writers        = io/geojson, io/geotiff
+table writers  = io/flatgeobuf, io/geoparquet
 inner          = cmd/drumlin/internal
 
 std, gonum < mv/internal < mv < mv/mvtest
@@ -46,8 +48,10 @@ std < io/events, io/record, io/internal < plain readers, arrow readers
 arrow, packing < arrow readers
 spatial, io/events, io/record, io/internal, packing < writers < io/report, io/bundle
 drawing < io/report
+spatial < io/layers < table writers
+arrow, flatbuffers < table writers
 
-mv, bandwidth, spatial, io/events, io/record, plain readers, arrow readers, writers, io/report, io/bundle < everything
+mv, bandwidth, spatial, io/events, io/record, plain readers, arrow readers, writers, table writers, io/report, io/bundle < everything
 viper < inner/config
 terminal < inner/progress
 everything, inner/config, inner/progress < inner/pipeline < inner/batch
@@ -65,7 +69,8 @@ import net
 import net/http
 import os/exec
 import viper                        but inner/config
-import arrow                        but arrow readers
+import arrow                        but arrow readers, io/geoparquet
+import flatbuffers                  but io/flatgeobuf
 import cobra                        but inner/cli
 import mv/mvtest
 import testscript

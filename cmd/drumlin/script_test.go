@@ -338,7 +338,7 @@ func oneLine(stderr string) string {
 		return "stderr holds a stack trace"
 	case strings.Contains(stderr, "%!"):
 		return "stderr is badly formatted"
-	case len(stderr) > 700:
+	case len(stderr) > 900:
 		return fmt.Sprintf("stderr is %d bytes long", len(stderr))
 	case strings.HasPrefix(stderr, "drumlin: ") && len(stderr) < 25:
 		return "stderr says too little"

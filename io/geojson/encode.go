@@ -68,6 +68,13 @@ func (e *encoder) exact(name string, v float64) {
 // bounds are rounded outward, but for a residue of floating point.
 func (e *encoder) count(c spatial.Count) {
 	const residue = 1e-6
+	if math.IsNaN(c.Estimate) { // withheld
+		for _, name := range []string{"events", "events_min", "events_max"} {
+			e.key(name)
+			e.raw("null")
+		}
+		return
+	}
 	e.exact("events", math.Round(c.Estimate))
 	e.exact("events_min", max(0, math.Floor(c.Min+residue)))
 	e.exact("events_max", math.Ceil(c.Max-residue))

@@ -16,6 +16,7 @@ type Meta struct {
 	Decimals int    // of positions, 1 to 7; 0 means 7
 	Unit     string // of intensities; "" means "events per km2"
 	Caution  string // one sentence that travels in the file; "" for none
+	sequence bool   // a text sequence instead of one collection
 }
 
 // WriteRegions writes regions.geojson: a MultiPolygon per highest density
@@ -128,6 +129,9 @@ func regionID(content float64) string {
 
 // write puts the whole collection out; props adds the properties of feature i.
 func (c *collection) write(w io.Writer, props func(e *encoder, i int)) error {
+	if c.meta.sequence {
+		return c.writeSequence(w, props)
+	}
 	e := &encoder{w: w, decimals: c.decimals}
 	e.raw(`{"type":"FeatureCollection",` + "\n")
 	if box, ok := c.bbox(); ok {
@@ -146,14 +150,8 @@ func (c *collection) write(w io.Writer, props func(e *encoder, i int)) error {
 		if i > 0 {
 			e.raw(",")
 		}
-		e.raw("\n" + `{"type":"Feature","id":`)
-		e.quoted(c.shapes[i].id)
-		e.raw(`,"properties":{`)
-		e.first = true
-		props(e, i)
-		e.raw(`},"geometry":`)
-		c.writeGeometry(e, &c.shapes[i])
-		e.raw("}")
+		e.raw("\n")
+		c.writeFeature(e, i, props)
 	}
 	if len(c.shapes) > 0 {
 		e.raw("\n")
@@ -163,6 +161,17 @@ func (c *collection) write(w io.Writer, props func(e *encoder, i int)) error {
 		return fmt.Errorf("geojson: %s: %w", c.what, err)
 	}
 	return nil
+}
+
+func (c *collection) writeFeature(e *encoder, i int, props func(e *encoder, i int)) {
+	e.raw(`{"type":"Feature","id":`)
+	e.quoted(c.shapes[i].id)
+	e.raw(`,"properties":{`)
+	e.first = true
+	props(e, i)
+	e.raw(`},"geometry":`)
+	c.writeGeometry(e, &c.shapes[i])
+	e.raw("}")
 }
 
 // writeMember writes the foreign member with what a reader of the file alone

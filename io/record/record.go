@@ -24,6 +24,8 @@ type Record struct {
 	Lattice     Lattice       `json:"lattice"`
 	Bandwidth   Bandwidth     `json:"bandwidth"`
 	Regions     Regions       `json:"regions"`
+	StudyArea   *StudyArea    `json:"study_area,omitempty"`
+	Zones       *Zones        `json:"zones,omitempty"`
 	Sensitivity []Sensitivity `json:"sensitivity,omitempty"`
 	Guard       Guard         `json:"guard"`
 	Warnings    []string      `json:"warnings,omitempty"` // about this run
@@ -168,6 +170,31 @@ type Regions struct {
 	Contents []float64 `json:"contents"`
 }
 
+// StudyArea is where events could be observed, and what was done at its edge.
+type StudyArea struct {
+	File     string  `json:"file"` // name without folder
+	Digest   Digest  `json:"digest"`
+	Polygons int     `json:"polygons"` // on the plane, after those that meet were united
+	Holes    int     `json:"holes"`
+	Vertices int     `json:"vertices"`
+	AreaKM2  float64 `json:"area_km2"` // on the plane
+	Edge     string  `json:"edge"`     // "renormalise", "conserve", "none"
+	Text     string  `json:"text"`     // the same in a sentence
+	// MassInside is the estimate's integral over the area: 1 where mass is conserved.
+	MassInside float64 `json:"mass_inside"`
+	// LeastInside is the least kernel mass inside the area at a place with events;
+	// 1 without correction.
+	LeastInside float64 `json:"least_kernel_mass_at_events"`
+}
+
+// Zones is the file of named polygons that were reported on.
+type Zones struct {
+	File    string `json:"file"` // name without folder
+	Digest  Digest `json:"digest"`
+	Zones   int    `json:"zones"`
+	Outside int    `json:"outside_study_area"` // left out: nothing of them lies in it
+}
+
 // Sensitivity is what the regions would be at another multiple of H.
 type Sensitivity struct {
 	Factor  float64             `json:"factor"` // of H
@@ -191,7 +218,10 @@ type Guard struct {
 	BandParts       int       `json:"band_parts_withheld"`
 	BandHoles       int       `json:"band_holes_withheld"`
 	Peaks           int       `json:"peaks_withheld"`
-	RegionsWithheld []float64 `json:"regions_withheld"` // contents withheld whole
+	RegionsWithheld []float64 `json:"regions_withheld"`      // contents withheld whole
+	ClosePairs      []string  `json:"close_pairs,omitempty"` // a region and a contour that differ by few events
+	Zones           int       `json:"zones_withheld,omitempty"`
+	ZonesComplement int       `json:"zones_withheld_for_others,omitempty"` // so that those cannot be worked out
 }
 
 // File is one file of the bundle.

@@ -104,6 +104,9 @@ func peakWords(p *Page, k spatial.Peak, u areaUnit) []any {
 		return append(parts, "Smoothing lowers it by about ", data(id+"/smoothing_bias_per_km2", same(k.SmoothingBiasPerKM2), significant(-k.SmoothingBiasPerKM2*u.km2, 2)),
 			"; without that it would read ", data(id+"/debiased_per_km2", same(k.DebiasedPerKM2), significant(k.DebiasedPerKM2*u.km2, 3)), ".")
 	}
+	if math.IsNaN(k.SmoothingBiasPerKM2) {
+		return append(parts, "So near the edge of the study area it is not known how much smoothing changes it.")
+	}
 	return append(parts, "Smoothing does not lower it.")
 }
 
@@ -113,7 +116,9 @@ func errorWords(peaks []spatial.Peak) []any {
 	for _, k := range peaks {
 		e := k.StandardErrorPerKM2 / k.IntensityPerKM2
 		lo, hi = min(lo, e), max(hi, e)
-		most = max(most, -k.SmoothingBiasPerKM2/k.IntensityPerKM2)
+		if k.SmoothingBiasPerKM2 < 0 {
+			most = max(most, -k.SmoothingBiasPerKM2/k.IntensityPerKM2)
+		}
 	}
 	parts := []any{}
 	if len(peaks) == 1 {

@@ -25,11 +25,19 @@ type Settings struct {
 	Matrix    []float64 `mapstructure:"matrix"` // h11, h12, h22 in square metres
 	Scale     float64   `mapstructure:"scale"`  // h in metres
 
-	Content    []float64 `mapstructure:"content"` // per cent
-	Bands      []float64 `mapstructure:"bands"`   // one whole number: how many; else levels, events per km2
-	Lattice    string    `mapstructure:"lattice"` // auto or a number of nodes
-	RegionRule string    `mapstructure:"region-rule"`
-	MinEvents  float64   `mapstructure:"min-events"`
+	StudyArea string `mapstructure:"study-area"` // GeoJSON file, none if ""
+	Edge      string `mapstructure:"edge"`       // renormalise, conserve, none
+	Zones     string `mapstructure:"zones"`      // GeoJSON file, none if ""
+
+	Content []float64 `mapstructure:"content"` // per cent
+	Bands   []float64 `mapstructure:"bands"`   // one whole number: how many; else levels, events per km2
+	// BandContent, when given, takes the place of Bands: the isobands' lower edges
+	// are the borders of the regions with these contents, per cent.
+	BandContent []float64 `mapstructure:"band-content"`
+
+	Lattice    string  `mapstructure:"lattice"` // auto or a number of nodes
+	RegionRule string  `mapstructure:"region-rule"`
+	MinEvents  float64 `mapstructure:"min-events"`
 
 	Context     string `mapstructure:"context"`     // lines drawn beneath the map, none if ""
 	Sensitivity bool   `mapstructure:"sensitivity"` // regions at H/2 and 2H too
@@ -87,11 +95,12 @@ func (s *Settings) Validate() error {
 	oneOf("bandwidth", s.Bandwidth, BandwidthNames...)
 	oneOf("shape", s.Shape, "full", "diagonal", "scalar")
 	oneOf("region-rule", s.RegionRule, "events", "mass")
+	oneOf("edge", s.Edge, "renormalise", "conserve", "none")
 	for _, v := range s.Formats {
-		oneOf("formats", v, "geojson", "geotiff")
+		oneOf("formats", v, "geojson", "geojson-seq", "geoparquet", "flatgeobuf", "geotiff", "parquet")
 	}
 	if len(s.Formats) == 0 {
-		bad("formats is empty; choose geojson, geotiff or both")
+		bad("formats is empty; choose some of geojson, geojson-seq, geoparquet, flatgeobuf, geotiff, parquet")
 	}
 	if n := len(s.Matrix); n != 0 && n != 3 {
 		bad("matrix has %d numbers; give h11,h12,h22 in square metres", n)
@@ -119,6 +128,12 @@ func (s *Settings) Validate() error {
 			bad("content %g stands twice", c)
 		}
 		seen[c] = true
+	}
+	for i, c := range s.BandContent {
+		if !(c >= 1 && c <= 99.9) || slices.Contains(s.BandContent[:i], c) {
+			bad("band-content %v: give different per cents between 1 and 99.9", s.BandContent)
+			break
+		}
 	}
 	if n := s.BandCount(); n > 100 {
 		bad("bands is %d; at most 100", n)

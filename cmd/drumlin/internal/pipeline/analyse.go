@@ -26,7 +26,7 @@ func analyse(e *Estimate, s *config.Settings) (spatial.Analysis, []string, error
 	a := spatial.Analysis{
 		Density: e.Density, Counts: e.Counts, Weights: e.Weights, FineCounts: e.FineCounts,
 		Events: e.Events, Total: e.Total,
-		KernelAtZero: e.KernelAtZero(), RegionRule: s.RegionRule,
+		KernelAtZero: e.KernelAtZero(), RegionRule: s.RegionRule, Area: e.Edge.area,
 	}
 	warnings, err := addThresholds(&a, e, s)
 	if err != nil {
@@ -36,13 +36,13 @@ func analyse(e *Estimate, s *config.Settings) (spatial.Analysis, []string, error
 		return a, nil, err
 	}
 	least := max(s.MinEvents, 1) * a.KernelAtZero / e.Events
-	for _, m := range spatial.FindMaxima(e.Density, least) {
+	for _, m := range spatial.FindMaxima(e.seen(), least) {
 		at := spatial.XY{X: m.X, Y: m.Y}
-		a.Peaks = append(a.Peaks, spatial.Summit{
-			At: at, Density: m.Value,
-			StandardError: math.Sqrt(mv.LeadingVariance(mv.Gaussian, e.Choice.Matrix, m.Value, e.EffectiveN)),
-			SmoothingBias: spatial.Sample(e.Bias, at),
-		})
+		if e.Edge.area != nil && !e.Edge.area.Contains(at) {
+			at = spatial.XY{X: e.Density.Coord(0, m.I), Y: e.Density.Coord(1, m.J)}
+			m.Value = e.Density.Values[m.J*e.Density.N[0]+m.I]
+		}
+		a.Peaks = append(a.Peaks, e.summit(at, m.Value))
 	}
 	slices.SortStableFunc(a.Peaks, func(p, q spatial.Summit) int {
 		switch {
@@ -56,17 +56,21 @@ func analyse(e *Estimate, s *config.Settings) (spatial.Analysis, []string, error
 	return a, warnings, nil
 }
 
-// regionThresholds returns the density on the border of the region with each
+// regionThreshold returns the density on the border of the region with a
 // content, by the rule asked for.
-func regionThreshold(e *Estimate, density mv.Grid, atZero, content float64, rule string) (float64, error) {
+func (e *Estimate) regionThreshold(atZero, content float64, rule string) (float64, error) {
+	density := e.Density.Values
 	if rule == "mass" {
-		return mv.DensityQuantile(density.Values, density.Values, content)
+		return mv.DensityQuantile(density, e.massWeights(), content)
 	}
 	counted := e.Counts
 	if e.Weights.Values != nil {
 		counted = e.Weights
 	}
-	q, err := mv.DensityQuantile(density.Values, counted.Values, content)
+	if len(e.Inside.Values) > 0 {
+		return mv.DensityQuantile(e.leaveOneOut(atZero), counted.Values, content)
+	}
+	q, err := mv.DensityQuantile(density, counted.Values, content)
 	if err != nil {
 		return 0, err
 	}
@@ -74,10 +78,10 @@ func regionThreshold(e *Estimate, density mv.Grid, atZero, content float64, rule
 }
 
 func addThresholds(a *spatial.Analysis, e *Estimate, s *config.Settings) (warnings []string, err error) {
-	lone := a.KernelAtZero / e.EffectiveN * math.Exp(-loneScales*loneScales/2)
+	lone := e.lone()
 	contents := slices.Sorted(slices.Values(s.Content))
 	for _, c := range contents {
-		t, err := regionThreshold(e, e.Density, a.KernelAtZero, c/100, s.RegionRule)
+		t, err := e.regionThreshold(a.KernelAtZero, c/100, s.RegionRule)
 		if err != nil {
 			return nil, err
 		}
@@ -92,6 +96,9 @@ func addThresholds(a *spatial.Analysis, e *Estimate, s *config.Settings) (warnin
 
 // bandLevels returns the isobands' lower edges as densities, rising.
 func bandLevels(e *Estimate, s *config.Settings) ([]float64, error) {
+	if len(s.BandContent) > 0 {
+		return e.contentLevels(s)
+	}
 	unit := 1 / (e.Total * perKM2)
 	n := s.BandCount()
 	if n == 0 {
@@ -109,12 +116,33 @@ func bandLevels(e *Estimate, s *config.Settings) ([]float64, error) {
 	if err != nil {
 		return nil, err
 	}
-	top := slices.Max(e.Density.Values)
+	top := e.top()
 	var out []float64
 	for _, v := range roundLevels(low/unit, top/unit, n) {
 		out = append(out, v*unit)
 	}
 	return out, nil
+}
+
+// contentLevels are the region borders of the contents asked for, rising.
+func (e *Estimate) contentLevels(s *config.Settings) ([]float64, error) {
+	atZero := e.KernelAtZero()
+	lone := e.lone()
+	var out []float64
+	for _, c := range s.BandContent {
+		t, err := e.regionThreshold(atZero, c/100, s.RegionRule)
+		if err != nil {
+			return nil, err
+		}
+		out = append(out, max(t, lone))
+	}
+	slices.Sort(out)
+	return slices.Compact(out), nil
+}
+
+// lone is the density that one event alone has loneScales scales away.
+func (e *Estimate) lone() float64 {
+	return e.KernelAtZero() / e.EffectiveN * math.Exp(-loneScales*loneScales/2)
 }
 
 // roundLevels returns n rising levels from about low to below top in equal

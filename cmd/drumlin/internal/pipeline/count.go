@@ -191,6 +191,9 @@ func (r *reading) count(ctx context.Context, sources []events.Source, w *pool, o
 		if r.input.Geographic || r.reproject {
 			p.X, p.Y, weights = dropOutside(p.X, p.Y, weights, &s.account)
 		}
+		if r.area != nil {
+			p.X, p.Y, weights = r.area.drop(p.X, p.Y, weights, &s.account)
+		}
 		return s.tally.Add(p.X, p.Y, weights)
 	})
 	if err != nil {

@@ -41,15 +41,35 @@ func Describe(w io.Writer, res *Result) {
 			fmt.Fprintf(w, "... and %d lower peaks.\n", len(res.Release.Peaks())-3)
 			break
 		}
-		fmt.Fprintf(w, "Peak %d at %s: %s events per km2, standard error %s; smoothing takes off about %s.\n",
-			p.Rank, Place(p.Position, rec.CRS.Plane.Method), Significant(p.IntensityPerKM2), Significant(p.StandardErrorPerKM2), Significant(math.Max(0, -p.SmoothingBiasPerKM2)))
+		smoothing := "smoothing takes off about " + Significant(math.Max(0, -p.SmoothingBiasPerKM2))
+		if math.IsNaN(p.SmoothingBiasPerKM2) {
+			smoothing = "what smoothing takes off so near the edge is not known"
+		}
+		fmt.Fprintf(w, "Peak %d at %s: %s events per km2, standard error %s; %s.\n",
+			p.Rank, Place(p.Position, rec.CRS.Plane.Method), Significant(p.IntensityPerKM2), Significant(p.StandardErrorPerKM2), smoothing)
 	}
 	b := rec.Bandwidth
 	fmt.Fprintf(w, "Bandwidth (%s, %s): %s m along bearing %.0f degrees, %s m across.\n", b.Method, b.Shape, Significant(b.Major), b.Bearing, Significant(b.Minor))
+	if a := rec.StudyArea; a != nil {
+		fmt.Fprintf(w, "Study area: %s km2; at its edge %s.\n", Significant(a.AreaKM2), a.Text)
+	}
+	if z := rec.Zones; z != nil {
+		fmt.Fprintf(w, "Zones: %d, of which %d without numbers because they hold few events, and %d so that those cannot be worked out.\n", z.Zones, rec.Guard.Zones, rec.Guard.ZonesComplement)
+	}
 	g := rec.Guard
 	if n := g.RegionParts + g.RegionHoles + g.BandParts + g.BandHoles + g.Peaks; n > 0 {
 		fmt.Fprintf(w, "Withheld because they rest on fewer than %g events: %d parts, holes or peaks.\n", g.MinEvents, n)
 	}
+	if n := len(g.ClosePairs); n > 0 {
+		fmt.Fprintf(w, "%s by fewer than %g events: do not publish both, or choose --content and --bands further apart (the record names them).\n", pairs(n), g.MinEvents)
+	}
+}
+
+func pairs(n int) string {
+	if n == 1 {
+		return "One pair of a region and a contour differs"
+	}
+	return fmt.Sprintf("%d pairs of a region and a contour differ", n)
 }
 
 func parts(n int) string {

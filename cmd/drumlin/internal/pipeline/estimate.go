@@ -56,6 +56,11 @@ type Estimate struct {
 	Nodes         int     // along the longer axis
 	Spectrum      *mv.Spectrum
 	Covariance    []float64
+	Edge          edge
+	Inside        mv.Grid // kernel mass inside the study area; no values without edge correction
+	InsideHalf    mv.Grid // the same for H/2, for the standard error
+	nodes         mv.Grid // what the spectrum was made from
+	options       mv.SpectrumOptions
 }
 
 // finerNeeded asks for another pass over the events with a tally that resolves
@@ -79,6 +84,7 @@ type estimator struct {
 	nodes     int // asked for, 0 = choose
 	workers   int
 	canRepeat bool // another pass over the events is possible
+	edge      edge
 	progress  func(stage string)
 }
 
@@ -154,13 +160,17 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 			return nil, err
 		}
 		m.progress("surface")
-		e.Density = spectrum.Density(e.Choice.Matrix)
-		clampNegative(e.Density.Values)
+		e.Spectrum, e.Covariance, e.Edge = spectrum, cov, m.edge
+		if err := e.surface(true); err != nil {
+			return nil, err
+		}
+		if m.edge.area != nil && e.Choice.Method != "fixed" {
+			e.Choice.Notes = append(e.Choice.Notes, "chosen from the events as they are, without correction at the edge of the study area")
+		}
 		if e.BiasPilot, err = bandwidth.Hessian(bandwidth.Events{Spectrum: spectrum, Covariance: cov}); err != nil {
 			return nil, err
 		}
 		e.Bias = spectrum.SmoothingBias(e.Choice.Matrix, e.BiasPilot.Matrix)
-		e.Spectrum, e.Covariance = spectrum, cov
 		return e, nil
 	}
 }
@@ -285,7 +295,8 @@ func (m *estimator) at(lo, hi [2]int64, base, level, fine int, margin [2]float64
 		}
 		reach[k] = max(0, kernelReach*math.Sqrt(v)-margin[k])
 	}
-	spectrum, err := mv.NewSpectrum(nodes, mv.SpectrumOptions{Reach: reach, Coarsen: level - fine, EffectiveN: n, Workers: m.workers})
+	e.nodes, e.options = nodes, mv.SpectrumOptions{Reach: reach, Coarsen: level - fine, EffectiveN: n, Workers: m.workers}
+	spectrum, err := mv.NewSpectrum(nodes, e.options)
 	if err != nil {
 		return nil, nil, err
 	}

@@ -92,6 +92,9 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 	if err != nil {
 		return nil, err
 	}
+	if in.area, err = readArea(r.settings.StudyArea, in.input.Plane); err != nil {
+		return nil, err
+	}
 	var rows int64
 	for _, s := range r.sources {
 		if n := s.Info().Rows; n < 0 || rows < 0 {
@@ -106,7 +109,14 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		return nil, err
 	}
 	r.warnings = append(r.warnings, in.warnings...)
+	if err := in.area.onPlane(in.plane); err != nil {
+		return nil, err
+	}
 	orientation, err := contextLines(r.settings.Context, in.plane)
+	if err != nil {
+		return nil, err
+	}
+	zones, zoned, err := r.readZones(in)
 	if err != nil {
 		return nil, err
 	}
@@ -121,7 +131,9 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		if counted.account.Used == 0 {
 			return nil, fmt.Errorf("%w: %s", ErrNoEvents, reasonsText(counted.account))
 		}
-		counted.tally.TrimStrays()
+		if in.area == nil {
+			counted.tally.TrimStrays()
+		}
 		if counted.account.Read > 0 && pass == 1 {
 			r.report.Expect(0)
 		}
@@ -135,6 +147,9 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 			}
 		}
 		m := &estimator{tally: counted.tally, sel: sel, nodes: r.settings.Nodes(), workers: r.workers, canRepeat: pass < mostPasses, progress: r.report.Stage}
+		if in.area != nil {
+			m.edge = edge{area: in.area.plane, form: r.settings.Edge}
+		}
 		err = r.timed("estimate", func() (err error) { est, err = m.estimate(ctx); return err })
 		var finer *finerNeeded
 		switch {
@@ -156,6 +171,7 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 			return err
 		}
 		r.warnings = append(r.warnings, warnings...)
+		analysis.Zones = zones
 		release, err = spatial.Guard(analysis, spatial.Policy{MinEvents: r.settings.MinEvents, Workers: r.workers}, in.plane)
 		return err
 	})
@@ -163,11 +179,14 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		return nil, err
 	}
 	r.warnEstimate(est, counted)
+	r.warnDistortion(in.plane, est)
 	inputs, err := digests.wait(counted.perFile)
 	if err != nil {
 		return nil, err
 	}
 	rec := r.record(in, counted, est, release, inputs)
+	rec.Zones = zoned
+	rec.Guard.ClosePairs = closePairs(release)
 	page := report.Page{Record: rec, Release: release, Projection: in.plane, Context: orientation, Choices: choices(est)}
 	if r.settings.Sensitivity {
 		err := r.timed("sensitivity", func() (err error) {
@@ -219,7 +238,8 @@ func (r *run) warnEstimate(e *Estimate, c *tallied) {
 	if out := c.tally.Outside(); out > 0 {
 		warn("%s events lie far outside the rest and were left out of the map", progress.Count(out))
 	}
-	if share := float64(c.account.SetAsideTotal()) / float64(c.account.Read); share > 0.2 {
+	elsewhere := c.account.SetAside[events.OutsideStudyArea] // asked for
+	if share := float64(c.account.SetAsideTotal()-elsewhere) / float64(c.account.Read); share > 0.2 {
 		warn("%.0f %% of the rows were set aside: %s", 100*share, reasonsText(c.account))
 	}
 }

@@ -19,6 +19,7 @@ type reading struct {
 	reproject    bool               // input is projected, but not on the plane of the estimate
 	extent       extent             // of the raw coordinates; known for a plane without a place
 	warnings     []string
+	area         *areaFile // nil without a study area
 }
 
 func (r *reading) columns() []string {
@@ -109,7 +110,8 @@ func inFile(err error, src events.Source) error {
 
 // choosePlane settles the plane of the estimate: the one asked for; metres
 // without a place as they are; an equal-area input plane as it is; else
-// Lambert's equal-area projection centred on the events, to whole degrees.
+// Lambert's equal-area projection centred on the study area or the events, to
+// whole degrees.
 func (r *reading) choosePlane(ctx context.Context, s *config.Settings, sources []events.Source, w *pool) error {
 	if r.input.Plane {
 		if s.WorkCRS != "auto" && s.WorkCRS != "plane" {
@@ -159,6 +161,9 @@ func (r *reading) choosePlane(ctx context.Context, s *config.Settings, sources [
 // from a first pass over them. Whether the extent is that of the files'
 // statistics or, where one lacks them, that of a first pass makes no difference.
 func (r *reading) centre(ctx context.Context, sources []events.Source, w *pool) (spatial.LonLat, error) {
+	if r.area != nil {
+		return spatial.AreaCentre(r.area.shape), nil
+	}
 	choose := func(e extent) (spatial.LonLat, bool) {
 		if !r.input.Geographic {
 			return spatial.LonLat{}, false

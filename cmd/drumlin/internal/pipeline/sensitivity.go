@@ -36,7 +36,7 @@ func sensitivity(e *Estimate, s *config.Settings, rel *spatial.Release, proj spa
 		}
 		a := spatial.Analysis{
 			Density: other.Density, Counts: e.Counts, Weights: e.Weights, FineCounts: e.FineCounts,
-			Events: e.Events, Total: e.Total, KernelAtZero: other.KernelAtZero(), RegionRule: s.RegionRule,
+			Events: e.Events, Total: e.Total, KernelAtZero: other.KernelAtZero(), RegionRule: s.RegionRule, Area: e.Edge.area,
 		}
 		warnings, err := addThresholds(&a, other, s)
 		if err != nil {
@@ -77,9 +77,7 @@ func (e *Estimate) atFactor(c float64) (*Estimate, error) {
 		return nil, fmt.Errorf("%g times the bandwidth matrix: %w", c, err)
 	}
 	o.StepsPerScale = o.Choice.Matrix.Ellipse().Minor / e.Density.Step[0]
-	o.Density = e.Spectrum.Density(o.Choice.Matrix)
-	clampNegative(o.Density.Values)
-	return &o, nil
+	return &o, o.surface(false)
 }
 
 // choices puts what the selectors say side by side. Where the one used

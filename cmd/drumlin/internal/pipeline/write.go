@@ -3,7 +3,6 @@ package pipeline
 import (
 	"context"
 	"fmt"
-	"io"
 	"math"
 	"path/filepath"
 	"runtime"
@@ -14,7 +13,6 @@ import (
 	"drumlin/io/bundle"
 	"drumlin/io/events"
 	"drumlin/io/geojson"
-	"drumlin/io/geotiff"
 	"drumlin/io/record"
 	"drumlin/io/report"
 	"drumlin/mv"
@@ -112,7 +110,16 @@ func (r *run) record(in *reading, c *tallied, e *Estimate, rel *spatial.Release,
 		}
 	}
 	rec.CRS.Distortion = distortion(in.plane, e.Density.Lattice)
+	rec.StudyArea = areaRecord(in.area, e)
 	return rec
+}
+
+// baseName is a file's name without its folder, "" for none.
+func baseName(path string) string {
+	if path == "" {
+		return ""
+	}
+	return filepath.Base(path)
 }
 
 func contents(perCent []float64) []float64 {
@@ -139,7 +146,8 @@ func (r *run) recordedSettings(in *reading) record.Settings {
 		out = append(out, record.Setting{Name: "context", Value: filepath.Base(s.Context)})
 	}
 	return append(out, record.Settings{
-		{Name: "content", Value: slices.Sorted(slices.Values(s.Content))}, {Name: "bands", Value: s.Bands}, {Name: "lattice", Value: s.Lattice},
+		{Name: "content", Value: slices.Sorted(slices.Values(s.Content))}, {Name: "bands", Value: s.Bands}, {Name: "band-content", Value: slices.Sorted(slices.Values(s.BandContent))}, {Name: "lattice", Value: s.Lattice},
+		{Name: "study-area", Value: baseName(s.StudyArea)}, {Name: "edge", Value: s.Edge}, {Name: "zones", Value: baseName(s.Zones)},
 		{Name: "region-rule", Value: s.RegionRule}, {Name: "min-events", Value: s.MinEvents}, {Name: "sensitivity", Value: s.Sensitivity}, {Name: "formats", Value: s.Formats},
 	}...)
 }
@@ -178,6 +186,7 @@ func guardRecord(rel *spatial.Release) record.Guard {
 	g := record.Guard{
 		MinEvents: w.MinEvents, RegionParts: w.RegionParts, RegionHoles: w.RegionHoles,
 		BandParts: w.BandParts, BandHoles: w.BandHoles, Peaks: w.Peaks, RegionsWithheld: w.Regions,
+		Zones: w.Zones, ZonesComplement: w.ZonesComplement,
 	}
 	if b := rel.Bands(); len(b) > 0 {
 		g.FloorPerKM2 = roundTo(b[0].FromPerKM2, 9)
@@ -253,19 +262,8 @@ func (r *run) write(ctx context.Context, b *bundle.Bundle, rel *spatial.Release,
 	if r.settings.Weight != "" {
 		meta.Unit = "weight per km2"
 	}
-	type file struct {
-		format, name string
-		write        func(w io.Writer) error
-	}
 	err := r.timed("write", func() error {
-		for _, f := range []file{
-			{"geojson", "regions.geojson", func(w io.Writer) error { return geojson.WriteRegions(w, rel, meta) }},
-			{"geojson", "contours.geojson", func(w io.Writer) error { return geojson.WriteContours(w, rel, meta) }},
-			{"geojson", "peaks.geojson", func(w io.Writer) error { return geojson.WritePeaks(w, rel, meta) }},
-			{"geotiff", "surface.tif", func(w io.Writer) error {
-				return geotiff.Write(ctx, w, rel, geotiff.Options{Workers: r.workers, Unit: meta.Unit})
-			}},
-		} {
+		for _, f := range r.outputs(ctx, rel, page.Projection, meta) {
 			if !slices.Contains(r.settings.Formats, f.format) {
 				continue
 			}
