@@ -33,8 +33,8 @@ viper          = github.com/spf13/viper, github.com/go-viper/mapstructure/v2, gi
 terminal       = golang.org/x/term
 testscript     = github.com/rogpeppe/go-internal
 
-arrow readers  = io/parquetfile, io/arrowfile, io/geoparquet
-plain readers  = io/csvfile
+arrow readers  = io/parquetfile, io/arrowfile
+plain readers  = io/csvfile, io/partition, io/cql2
 writers        = io/geojson, io/geotiff, io/flatgeobuf
 inner          = cmd/drumlin/internal
 
@@ -42,10 +42,11 @@ std, gonum < mv/internal < mv < mv/mvtest
 mv, gonum/optimize < bandwidth
 mv, orb, simplefeatures < spatial
 std < io/events, io/record, io/internal < plain readers, arrow readers
-arrow, packing < arrow readers
+arrow, packing < arrow readers < io/geoparquet
+std, io/events, packing < io/packed
 spatial, io/events, io/record, io/internal, packing < writers < io/report, io/bundle
 
-mv, bandwidth, spatial, io/events, io/record, plain readers, arrow readers, writers, io/report, io/bundle < everything
+mv, bandwidth, spatial, io/events, io/record, plain readers, arrow readers, io/geoparquet, io/packed, writers, io/report, io/bundle < everything
 viper < inner/config
 terminal < inner/progress
 everything, inner/config, inner/progress < inner/pipeline < inner/batch

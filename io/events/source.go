@@ -115,8 +115,9 @@ func (b Batch) WordsOf(k int) []string {
 // Stat is what the input itself says of a column in one part, on the scale on
 // which Read yields it. NaN in the data may lie outside the range.
 type Stat struct {
-	Lo, Hi float64 // least and greatest value
-	Nulls  int64   // absent values, -1 where it does not say
+	Lo, Hi float64  // least and greatest value; of text nothing is meant
+	Nulls  int64    // absent values, -1 where it does not say
+	Words  []string // every word of a text column, nil where it does not say
 }
 
 // Surveyor is a Source that knows something of a part before it is read.
@@ -124,4 +125,12 @@ type Surveyor interface {
 	// Stat returns what is stated of a column in a part, and false where
 	// nothing is or it cannot be trusted.
 	Stat(part int, column string) (Stat, bool)
+}
+
+// StatOf asks a source that may be a Surveyor.
+func StatOf(s Source, part int, column string) (Stat, bool) {
+	if v, ok := s.(Surveyor); ok {
+		return v.Stat(part, column)
+	}
+	return Stat{}, false
 }

@@ -60,7 +60,7 @@ func (r *run) startDigests(ctx context.Context) *digestJob {
 			if j.err = ctx.Err(); j.err != nil {
 				return
 			}
-			if j.digests[i], _, j.err = record.FileDigest(s.Info().Name); j.err != nil {
+			if j.digests[i], _, j.err = record.FileDigest(s.Info().DigestPath()); j.err != nil {
 				j.err = &events.Fault{Kind: events.ErrMissing, File: s.Info().Name, What: "the file cannot be read again for its digest", Cause: j.err}
 				return
 			}
