@@ -14,11 +14,18 @@ import (
 type Settings struct {
 	Inputs []string `mapstructure:"inputs"` // files, folders, quoted globs
 
-	X       string `mapstructure:"x"`
-	Y       string `mapstructure:"y"`
-	CRS     string `mapstructure:"crs"`
-	WorkCRS string `mapstructure:"work-crs"`
-	Weight  string `mapstructure:"weight"`
+	X        string `mapstructure:"x"`
+	Y        string `mapstructure:"y"`
+	Geometry string `mapstructure:"geometry"`
+	CRS      string `mapstructure:"crs"`
+	WorkCRS  string `mapstructure:"work-crs"`
+	Weight   string `mapstructure:"weight"`
+
+	Where string `mapstructure:"where"` // row filter
+	Time  string `mapstructure:"time"`  // column of times
+	From  string `mapstructure:"from"`  // start of the time window
+	Until string `mapstructure:"until"` // its end, not part of it
+	Zone  string `mapstructure:"zone"`
 
 	Bandwidth string    `mapstructure:"bandwidth"`
 	Shape     string    `mapstructure:"shape"`
@@ -80,9 +87,7 @@ func (s *Settings) Validate() error {
 	if s.Out == "" {
 		bad("out is missing; name the folder to write, for example --out map")
 	}
-	if (s.X == "") != (s.Y == "") {
-		bad("only one of x and y is given; name both columns")
-	}
+	s.checkRows(bad)
 	oneOf("bandwidth", s.Bandwidth, "plug-in", "normal-reference")
 	oneOf("shape", s.Shape, "full", "diagonal", "scalar")
 	oneOf("region-rule", s.RegionRule, "events", "mass")
@@ -151,4 +156,17 @@ func (s *Settings) Validate() error {
 		text[i] = e.Error()
 	}
 	return fmt.Errorf("%w: %s", ErrSettings, strings.Join(text, "; "))
+}
+
+// checkRows looks at what chooses columns and rows.
+func (s *Settings) checkRows(bad func(string, ...any)) {
+	if (s.X == "") != (s.Y == "") {
+		bad("only one of x and y is given; name both columns")
+	}
+	if s.Geometry != "" && (s.X != "" || s.Y != "") {
+		bad("geometry and x, y are both given; give one")
+	}
+	if s.Time == "" && (s.From != "" || s.Until != "") {
+		bad("from and until need the column of times; name it with time")
+	}
 }

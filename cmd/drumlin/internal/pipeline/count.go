@@ -10,6 +10,7 @@ import (
 
 	"drumlin/cmd/drumlin/internal/progress"
 	"drumlin/io/events"
+	"drumlin/io/record"
 	"drumlin/mv"
 	"drumlin/spatial"
 )
@@ -32,8 +33,9 @@ type part struct {
 
 // each reads the columns of every part, split over the workers. visit gets the
 // worker's number, so that it can keep state of its own without locks. The
-// first error by part order wins, so the same fault is reported every time.
-func (w *pool) each(ctx context.Context, sources []events.Source, columns []string, visit func(worker, file int, b events.Batch) error) error {
+// first error by part order wins, so the same fault is reported every time. skip,
+// if not nil, returns the rows of a part that need not be read.
+func (w *pool) each(ctx context.Context, sources []events.Source, columns []string, skip func(worker int, p part) int64, visit func(worker, file int, b events.Batch) error) error {
 	var parts []part
 	for i, s := range sources {
 		for k := range s.Parts() {
@@ -53,6 +55,12 @@ func (w *pool) each(ctx context.Context, sources []events.Source, columns []stri
 					return
 				}
 				p := parts[i]
+				if skip != nil {
+					if n := skip(worker, p); n > 0 {
+						w.report.Rows(n)
+						continue
+					}
+				}
 				err := p.source.Read(ctx, p.index, columns, func(b events.Batch) error {
 					w.report.Rows(int64(b.Len()))
 					return visit(worker, p.file, b)
@@ -80,9 +88,17 @@ func (r *reading) countCentre(ctx context.Context, sources []events.Source, w *p
 	w.report.Stage("finding the centre")
 	counters := make([]spatial.CentreCounter, max(1, w.workers))
 	accounts := make([]events.Account, len(counters))
+	pickers := make([]picker, len(counters))
+	for i := range pickers {
+		pickers[i].pick = r.pick
+	}
+	skip := func(worker int, p part) int64 {
+		return pickers[worker].skip(p.source, p.file, p.index, &accounts[worker])
+	}
 	screen := r.screen()
 	screen.Weighted = false
-	err := w.each(ctx, sources, []string{r.x, r.y}, func(worker, _ int, b events.Batch) error {
+	err := w.each(ctx, sources, append([]string{r.x, r.y}, r.pick.columns()...), skip, func(worker, file int, b events.Batch) error {
+		b = pickers[worker].apply(file, b, 2, &accounts[worker])
 		n := screen.Apply(b, &accounts[worker])
 		p := spatial.LonLats{Lon: b.Columns[0][:n], Lat: b.Columns[1][:n]}
 		if r.reproject || !r.input.Geographic {
@@ -106,6 +122,7 @@ type tallied struct {
 	tally   *mv.Tally
 	account events.Account
 	perFile []int64 // rows read of each source
+	period  *record.Period
 }
 
 // count makes the tally in one parallel pass.
@@ -116,6 +133,7 @@ func (r *reading) count(ctx context.Context, sources []events.Source, w *pool, o
 		tally   *mv.Tally
 		account events.Account
 		perFile []int64
+		picker  picker
 	}
 	states := make([]state, max(1, w.workers))
 	for i := range states {
@@ -123,13 +141,22 @@ func (r *reading) count(ctx context.Context, sources []events.Source, w *pool, o
 		if err != nil {
 			return nil, err
 		}
-		states[i] = state{tally: t, perFile: make([]int64, len(sources))}
+		states[i] = state{tally: t, perFile: make([]int64, len(sources)), picker: picker{pick: r.pick}}
 	}
 	screen := r.screen()
-	err := w.each(ctx, sources, r.columns(), func(worker, file int, b events.Batch) error {
+	own := len(r.columns())
+	skip := func(worker int, p part) int64 {
+		s := &states[worker]
+		n := s.picker.skip(p.source, p.file, p.index, &s.account)
+		s.perFile[p.file] += n
+		return n
+	}
+	err := w.each(ctx, sources, append(r.columns(), r.pick.columns()...), skip, func(worker, file int, b events.Batch) error {
 		s := &states[worker]
 		s.perFile[file] += int64(b.Len())
+		b = s.picker.apply(file, b, own, &s.account)
 		n := screen.Apply(b, &s.account)
+		s.picker.note(file, b, n)
 		var weights []float64
 		if screen.Weighted {
 			weights = b.Columns[2][:n]
@@ -155,6 +182,11 @@ func (r *reading) count(ctx context.Context, sources []events.Source, w *pool, o
 			out.perFile[k] += n
 		}
 	}
+	for i := range states[1:] {
+		states[0].picker.utc.merge(states[i+1].picker.utc)
+		states[0].picker.wall.merge(states[i+1].picker.wall)
+	}
+	out.period = states[0].picker.period()
 	if !out.account.Balanced() {
 		return nil, fmt.Errorf("row account does not balance: %d read, %d used, %d set aside", out.account.Read, out.account.Used, out.account.SetAsideTotal())
 	}

@@ -98,6 +98,7 @@ func (r *run) record(in *reading, c *tallied, e *Estimate, rel *spatial.Release,
 		Bandwidth: bandwidthRecord(e),
 		Regions:   record.Regions{Rule: s.RegionRule, Text: record.RegionRuleText(s.RegionRule), Contents: contents(s.Content)},
 		Guard:     guardRecord(rel),
+		Period:    c.period,
 		Warnings:  r.warnings,
 		Cautions:  record.Cautions(),
 		Inputs:    inputs,
@@ -127,6 +128,16 @@ func (r *run) recordedSettings(in *reading) record.Settings {
 	out := record.Settings{
 		{Name: "x", Value: in.x}, {Name: "y", Value: in.y}, {Name: "crs", Value: in.inputName}, {Name: "work-crs", Value: s.WorkCRS},
 		{Name: "weight", Value: s.Weight}, {Name: "bandwidth", Value: s.Bandwidth}, {Name: "shape", Value: s.Shape},
+	}
+	for _, v := range []struct{ name, value string }{
+		{"geometry", s.Geometry}, {"where", s.Where}, {"time", s.Time}, {"from", s.From}, {"until", s.Until},
+	} {
+		if v.value != "" {
+			out = append(out, record.Setting{Name: v.name, Value: v.value})
+		}
+	}
+	if in.pick != nil {
+		out = append(out, record.Setting{Name: "zone", Value: s.Zone})
 	}
 	if len(s.Matrix) > 0 {
 		out = append(out, record.Setting{Name: "matrix", Value: s.Matrix})
