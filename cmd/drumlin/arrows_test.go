@@ -49,9 +49,10 @@ spatial, io/events, io/record, io/internal, packing < writers < io/report, io/bu
 mv, bandwidth, spatial, io/events, io/record, plain readers, arrow readers, io/geoparquet, io/packed, writers, io/report, io/bundle < everything
 viper < inner/config
 terminal < inner/progress
-everything, inner/config, inner/progress < inner/pipeline < inner/batch
+everything < inner/survey
+everything, inner/config, inner/progress, inner/survey < inner/pipeline < inner/batch
 everything < inner/demo
-everything, cobra, viper, terminal, inner/batch, inner/pipeline, inner/demo < inner/cli < cmd/drumlin
+everything, cobra, viper, terminal, inner/batch, inner/pipeline, inner/survey, inner/demo < inner/cli < cmd/drumlin
 testscript < tests
 `
 

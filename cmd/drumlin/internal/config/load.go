@@ -33,6 +33,15 @@ func InputFlags(f *pflag.FlagSet) {
 	f.String("work-crs", "auto", "plane of the estimate: auto (equal-area, centred on the events) or EPSG:n")
 }
 
+// SurveyFlags declares the flags of survey with their defaults.
+func SurveyFlags(f *pflag.FlagSet) {
+	InputFlags(f)
+	f.Bool("places", false, "say where the tallest stacks of events stand; they may point at people")
+	f.Int("workers", 0, "goroutines that work; 0: all CPUs")
+	f.Bool("json", false, "the result as JSON, messages as JSON lines")
+	f.Bool("quiet", false, "no progress")
+}
+
 // MapFlags declares the flags of map with their defaults.
 func MapFlags(f *pflag.FlagSet) {
 	InputFlags(f)

@@ -47,6 +47,7 @@ type Settings struct {
 	Formats []string `mapstructure:"formats"`
 	JSON    bool     `mapstructure:"json"`
 	Quiet   bool     `mapstructure:"quiet"`
+	Places  bool     `mapstructure:"places"` // of survey: say where the tallest stacks are
 }
 
 // ErrSettings marks settings that cannot be used.
@@ -169,4 +170,21 @@ func (s *Settings) checkRows(bad func(string, ...any)) {
 	if s.Time == "" && (s.From != "" || s.Until != "") {
 		bad("from and until need the column of times; name it with time")
 	}
+}
+
+// ValidateInput is Validate for commands that only read.
+func (s *Settings) ValidateInput() error {
+	var f []string
+	bad := func(format string, a ...any) { f = append(f, fmt.Sprintf(format, a...)) }
+	if len(s.Inputs) == 0 {
+		bad("no input; name one or more files")
+	}
+	s.checkRows(bad)
+	if s.Workers < 0 || s.Workers > 1024 {
+		bad("workers is %d; give 0 (all CPUs) to 1024", s.Workers)
+	}
+	if len(f) == 0 {
+		return nil
+	}
+	return fmt.Errorf("%w: %s", ErrSettings, strings.Join(f, "; "))
 }
