@@ -73,7 +73,9 @@ var ErrSpool = errors.New("the temporary file cannot be written")
 
 // Spool copies a stream into a new temporary file and returns its path. The
 // caller removes it. On error nothing is left. An error of the stream is
-// returned as it is, one of the file as ErrSpool.
+// returned as it is, one of the file as ErrSpool. When the context ends Spool
+// returns at once, even while the stream waits; the stream must not be used
+// afterwards.
 func Spool(ctx context.Context, r io.Reader) (path string, err error) {
 	f, err := os.CreateTemp("", "drumlin-*")
 	if err != nil {
@@ -88,20 +90,29 @@ func Spool(ctx context.Context, r io.Reader) (path string, err error) {
 			path = ""
 		}
 	}()
+	done := make(chan error, 1)
+	go func() { done <- copyAll(ctx, f, r) }()
+	select {
+	case err := <-done:
+		return f.Name(), err
+	case <-ctx.Done():
+		return "", ctx.Err()
+	}
+}
+
+func copyAll(ctx context.Context, f *os.File, r io.Reader) error {
 	b := make([]byte, copyBytes)
-	for {
-		if err := ctx.Err(); err != nil {
-			return "", err
-		}
+	for ctx.Err() == nil {
 		n, err := r.Read(b)
 		if _, e := f.Write(b[:n]); e != nil {
-			return "", fmt.Errorf("%w: %w", ErrSpool, e)
+			return fmt.Errorf("%w: %w", ErrSpool, e)
 		}
 		if errors.Is(err, io.EOF) {
-			return f.Name(), nil
+			return nil
 		}
 		if err != nil {
-			return "", err
+			return err
 		}
 	}
+	return ctx.Err()
 }

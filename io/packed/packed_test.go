@@ -11,6 +11,7 @@ import (
 	"strings"
 	"testing"
 	"testing/iotest"
+	"time"
 
 	"github.com/klauspost/compress/zstd"
 
@@ -109,6 +110,13 @@ func TestSpool(t *testing.T) {
 	ctx, cancel := context.WithCancel(t.Context())
 	cancel()
 	if _, err := packed.Spool(ctx, strings.NewReader("ab")); !errors.Is(err, context.Canceled) {
+		t.Error(err)
+	}
+	ctx, cancel = context.WithCancel(t.Context())
+	waits, w := io.Pipe() // nobody writes
+	defer w.Close()
+	time.AfterFunc(20*time.Millisecond, cancel)
+	if _, err := packed.Spool(ctx, waits); !errors.Is(err, context.Canceled) {
 		t.Error(err)
 	}
 	if left, _ := os.ReadDir(os.TempDir()); len(left) > 0 {
