@@ -177,7 +177,14 @@ func FuzzCSV(f *testing.F) {
 			return
 		}
 		for _, c := range s.Fields() {
-			check(s.Read(t.Context(), 0, []string{c.Name}, func(b events.Batch) error { return nil }))
+			check(s.Read(t.Context(), 0, []string{c.Name}, func(b events.Batch) error {
+				for _, v := range b.Columns[0] {
+					if c.Class == events.Text && v == v && b.WordsOf(0)[int(v)] == "" {
+						t.Fatal("an empty word")
+					}
+				}
+				return nil
+			}))
 		}
 	})
 }

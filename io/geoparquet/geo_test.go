@@ -8,6 +8,7 @@ import (
 	"path/filepath"
 	"strings"
 	"testing"
+	"unicode/utf8"
 
 	"github.com/apache/arrow/go/v17/parquet"
 	"github.com/apache/arrow/go/v17/parquet/file"
@@ -165,6 +166,9 @@ func FuzzGeo(f *testing.F) {
 	f.Add(`{"primary_column":"n","columns":{"n":{"encoding":"point"},"geometry":{"encoding":"wkb"}}}`)
 	f.Add(`{"columns":{"geometry":{"encoding":"WKB","geometry_types":["Point"],"crs":{"id":{"authority":7,"code":[]}}}}}`)
 	f.Fuzz(func(t *testing.T, geo string) {
+		if !utf8.ValidString(geo) {
+			return // the library that writes the file refuses it
+		}
 		src, err := geoparquet.Open(withGeo(t, geo, [][]byte{wkb(true, 1, 5, 6), nil}), parquetfile.Options{})
 		if err != nil {
 			t.Fatal(err)

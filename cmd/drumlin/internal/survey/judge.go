@@ -19,7 +19,7 @@ const (
 func (t *Tally) Judge(c *Coordinates, limit float64, places bool) {
 	p := t.places
 	c.Rows, c.TieLimit, c.NullIsland, c.Swapped = p.rows, limit, t.island, t.swapped
-	c.Distinct, c.OneIn, c.Estimated = int64(len(p.at))*p.scale(), p.scale(), p.level > 0
+	c.Distinct, c.OneIn, c.Estimated = min(p.rows, int64(len(p.at))*p.scale()), p.scale(), p.level > 0
 	c.CRSGuesses, c.Stacks, c.Decimals, c.Sentinels = []string{}, []Stack{}, []Decimals{}, []Sentinel{}
 	for i, n := range t.marks {
 		if n > 0 {
