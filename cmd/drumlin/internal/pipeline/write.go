@@ -255,6 +255,9 @@ const Version = "0.1.0"
 // write puts the release and the record into the bundle and publishes it.
 func (r *run) write(ctx context.Context, b *bundle.Bundle, rel *spatial.Release, rec *record.Record, page report.Page) error {
 	meta := geojson.Meta{Weighted: r.settings.Weight != "", Caution: record.Caution}
+	if rec.Period != nil {
+		meta.Years = rec.Period.Years
+	}
 	if r.settings.Weight != "" {
 		meta.Unit = "weight per km2"
 	}
