@@ -31,6 +31,7 @@ packing        = github.com/klauspost/compress, github.com/pierrec/lz4/v4
 cobra          = github.com/spf13/cobra
 viper          = github.com/spf13/viper, github.com/go-viper/mapstructure/v2, github.com/spf13/pflag
 terminal       = golang.org/x/term
+drawing        = golang.org/x/image
 testscript     = github.com/rogpeppe/go-internal
 
 arrow readers  = io/parquetfile, io/arrowfile
@@ -45,6 +46,7 @@ std < io/events, io/record, io/internal < plain readers, arrow readers
 arrow, packing < arrow readers < io/geoparquet
 std, io/events, packing < io/packed
 spatial, io/events, io/record, io/internal, packing < writers < io/report, io/bundle
+drawing < io/report
 
 mv, bandwidth, spatial, io/events, io/record, plain readers, arrow readers, io/geoparquet, io/packed, writers, io/report, io/bundle < everything
 viper < inner/config

@@ -38,7 +38,8 @@ type Settings struct {
 	RegionRule string    `mapstructure:"region-rule"`
 	MinEvents  float64   `mapstructure:"min-events"`
 
-	Sensitivity bool `mapstructure:"sensitivity"` // regions at H/2 and 2H too
+	Context     string `mapstructure:"context"`     // lines drawn beneath the map, none if ""
+	Sensitivity bool   `mapstructure:"sensitivity"` // regions at H/2 and 2H too
 
 	PNG     string   `mapstructure:"png"` // picture to write, none if ""
 	Workers int      `mapstructure:"workers"`

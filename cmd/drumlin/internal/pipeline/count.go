@@ -82,39 +82,89 @@ func (w *pool) each(ctx context.Context, sources []events.Source, columns []stri
 	return first
 }
 
-// countCentre is the first pass over coordinates that finds the centre; the
-// account says what became of the rows.
-func (r *reading) countCentre(ctx context.Context, sources []events.Source, w *pool) (*spatial.CentreCounter, events.Account, error) {
-	w.report.Stage("finding the centre")
-	counters := make([]spatial.CentreCounter, max(1, w.workers))
-	accounts := make([]events.Account, len(counters))
-	pickers := make([]picker, len(counters))
-	for i := range pickers {
-		pickers[i].pick = r.pick
+// extent is the least and greatest raw value of the x and y columns, rows that
+// will be set aside among them and NaN not, as a file's statistics have it.
+type extent struct{ lo, hi [2]float64 }
+
+func noExtent() extent {
+	inf := math.Inf(1)
+	return extent{[2]float64{inf, inf}, [2]float64{-inf, -inf}}
+}
+
+func (e *extent) add(axis int, lo, hi float64) {
+	e.lo[axis], e.hi[axis] = min(e.lo[axis], lo), max(e.hi[axis], hi)
+}
+
+// stated is the extent from the files' own statistics, false where one lacks them.
+// They are those of all rows, and unknown where only some are looked at.
+func (r *reading) stated(sources []events.Source) (extent, bool) {
+	e := noExtent()
+	if r.pick != nil {
+		return e, false
 	}
-	skip := func(worker int, p part) int64 {
-		return pickers[worker].skip(p.source, p.file, p.index, &accounts[worker])
+	for _, src := range sources {
+		for axis, c := range []string{r.x, r.y} {
+			lo, hi, ok := src.Bounds(c)
+			if !ok {
+				return e, false
+			}
+			e.add(axis, lo, hi)
+		}
+	}
+	return e, true
+}
+
+// firstLook is what a first pass over the coordinates finds.
+type firstLook struct {
+	counter spatial.CentreCounter
+	account events.Account
+	extent  extent
+}
+
+// look is the first pass over coordinates: for the centre where it is wanted,
+// and for the extent.
+func (r *reading) look(ctx context.Context, sources []events.Source, w *pool, centre bool) (*firstLook, error) {
+	w.report.Stage("finding the centre")
+	looks := make([]firstLook, max(1, w.workers))
+	for i := range looks {
+		looks[i].extent = noExtent()
 	}
 	screen := r.screen()
 	screen.Weighted = false
-	err := w.each(ctx, sources, append([]string{r.x, r.y}, r.pick.columns()...), skip, func(worker, file int, b events.Batch) error {
-		b = pickers[worker].apply(file, b, 2, &accounts[worker])
-		n := screen.Apply(b, &accounts[worker])
+	account := func(worker int) (*events.Account, []int64) { return &looks[worker].account, nil }
+	_, err := r.rows(ctx, sources, w, []string{r.x, r.y}, account, func(worker, _ int, b events.Batch, _ *picker) error {
+		l := &looks[worker]
+		for axis := range 2 {
+			for _, v := range b.Columns[axis] {
+				if v == v {
+					l.extent.add(axis, v, v)
+				}
+			}
+		}
+		n := screen.Apply(b, &l.account)
+		if !centre {
+			return nil
+		}
 		p := spatial.LonLats{Lon: b.Columns[0][:n], Lat: b.Columns[1][:n]}
 		if r.reproject || !r.input.Geographic {
 			p = r.input.Projection.Inverse(spatial.XYs{X: p.Lon, Y: p.Lat})
 		}
-		counters[worker].Add(p)
+		l.counter.Add(p)
 		return nil
 	})
 	if err != nil {
-		return nil, events.Account{}, err
+		return nil, err
 	}
-	for i := range counters[1:] {
-		counters[0].Merge(&counters[i+1])
-		accounts[0].Add(accounts[i+1])
+	out := &looks[0]
+	for i := range looks[1:] {
+		l := &looks[i+1]
+		out.counter.Merge(&l.counter)
+		out.account.Add(l.account)
+		for axis := range 2 {
+			out.extent.add(axis, l.extent.lo[axis], l.extent.hi[axis])
+		}
 	}
-	return &counters[0], accounts[0], nil
+	return out, nil
 }
 
 // tallied is the outcome of a pass over the events.
@@ -133,7 +183,6 @@ func (r *reading) count(ctx context.Context, sources []events.Source, w *pool, o
 		tally   *mv.Tally
 		account events.Account
 		perFile []int64
-		picker  picker
 	}
 	states := make([]state, max(1, w.workers))
 	for i := range states {
@@ -141,22 +190,14 @@ func (r *reading) count(ctx context.Context, sources []events.Source, w *pool, o
 		if err != nil {
 			return nil, err
 		}
-		states[i] = state{tally: t, perFile: make([]int64, len(sources)), picker: picker{pick: r.pick}}
+		states[i] = state{tally: t, perFile: make([]int64, len(sources))}
 	}
 	screen := r.screen()
-	own := len(r.columns())
-	skip := func(worker int, p part) int64 {
+	account := func(worker int) (*events.Account, []int64) { return &states[worker].account, states[worker].perFile }
+	all, err := r.rows(ctx, sources, w, r.columns(), account, func(worker, file int, b events.Batch, k *picker) error {
 		s := &states[worker]
-		n := s.picker.skip(p.source, p.file, p.index, &s.account)
-		s.perFile[p.file] += n
-		return n
-	}
-	err := w.each(ctx, sources, append(r.columns(), r.pick.columns()...), skip, func(worker, file int, b events.Batch) error {
-		s := &states[worker]
-		s.perFile[file] += int64(b.Len())
-		b = s.picker.apply(file, b, own, &s.account)
 		n := screen.Apply(b, &s.account)
-		s.picker.note(file, b, n)
+		k.note(file, b, n)
 		var weights []float64
 		if screen.Weighted {
 			weights = b.Columns[2][:n]
@@ -182,11 +223,7 @@ func (r *reading) count(ctx context.Context, sources []events.Source, w *pool, o
 			out.perFile[k] += n
 		}
 	}
-	for i := range states[1:] {
-		states[0].picker.utc.merge(states[i+1].picker.utc)
-		states[0].picker.wall.merge(states[i+1].picker.wall)
-	}
-	out.period = states[0].picker.period()
+	out.period = all.period()
 	if !out.account.Balanced() {
 		return nil, fmt.Errorf("row account does not balance: %d read, %d used, %d set aside", out.account.Read, out.account.Used, out.account.SetAsideTotal())
 	}

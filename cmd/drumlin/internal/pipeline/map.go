@@ -102,6 +102,10 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		return nil, err
 	}
 	r.warnings = append(r.warnings, in.warnings...)
+	orientation, err := contextLines(r.settings.Context, in.plane)
+	if err != nil {
+		return nil, err
+	}
 
 	var counted *tallied
 	var est *Estimate
@@ -113,7 +117,7 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		if counted.account.Used == 0 {
 			return nil, fmt.Errorf("%w: %s", ErrNoEvents, reasonsText(counted.account))
 		}
-		counted.tally.Trim(counted.tally.CoreBox())
+		counted.tally.TrimStrays()
 		if counted.account.Read > 0 && pass == 1 {
 			r.report.Expect(0)
 		}
@@ -155,7 +159,7 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		return nil, err
 	}
 	rec := r.record(in, counted, est, release, inputs)
-	page := report.Page{Record: rec, Release: release, Projection: in.plane, Choices: choices(est)}
+	page := report.Page{Record: rec, Release: release, Projection: in.plane, Context: orientation, Choices: choices(est)}
 	if r.settings.Sensitivity {
 		err := r.timed("sensitivity", func() (err error) {
 			r.report.Stage("regions at H/2 and 2H")
@@ -185,14 +189,8 @@ func (r *run) tallyOptions(in *reading) mv.TallyOptions {
 		return opt
 	}
 	extent := 0.0
-	for _, src := range r.sources {
-		for _, c := range []string{in.x, in.y} {
-			lo, hi, ok := src.Bounds(c)
-			if !ok {
-				return opt
-			}
-			extent = max(extent, math.Abs(lo), math.Abs(hi))
-		}
+	for axis := range 2 {
+		extent = max(extent, math.Abs(in.extent.lo[axis]), math.Abs(in.extent.hi[axis]))
 	}
 	for extent > 0 && opt.Grain > -24 && math.Ldexp(extent, -opt.Grain) < 1<<24 {
 		opt.Grain--

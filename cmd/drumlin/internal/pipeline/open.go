@@ -11,6 +11,7 @@ import (
 	"slices"
 	"strings"
 
+	"drumlin/io/arrowfile"
 	"drumlin/io/bundle"
 	"drumlin/io/csvfile"
 	"drumlin/io/events"
@@ -173,12 +174,14 @@ func openPlain(path, format string) (events.Source, error) {
 		return geoparquet.Open(path, parquetfile.Options{})
 	case events.FormatCSV:
 		return csvfile.Open(path)
+	case events.FormatArrowFile, events.FormatArrowStream:
+		return arrowfile.Open(path, arrowfile.Options{})
 	case events.FormatEmpty:
 		return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "the file is empty", Remedy: "check how it was made"}
 	case events.FormatUnknown:
-		return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "the content is neither Parquet nor text with columns", Remedy: "give a Parquet or CSV file"}
+		return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "the content is neither Parquet, Arrow nor text with columns", Remedy: "give a Parquet, Arrow or CSV file"}
 	}
-	return nil, &events.Fault{Kind: events.ErrUnsupported, File: path, What: fmt.Sprintf("the content is %s, which is not read yet", format), Remedy: "give a Parquet or CSV file"}
+	return nil, &events.Fault{Kind: events.ErrUnsupported, File: path, What: fmt.Sprintf("the content is %s, which is not read yet", format), Remedy: "give a Parquet, Arrow or CSV file"}
 }
 
 // openPacked opens a gzip or zstd file: text is unpacked anew for every pass,

@@ -1,8 +1,10 @@
 package pipeline
 
 import (
+	"context"
 	"fmt"
 	"math"
+	"slices"
 	"time"
 	_ "time/tzdata" // time zones by name, wherever the program runs
 
@@ -116,6 +118,43 @@ type picker struct {
 	times   []float64 // of the words of a batch, NaN where not looked at
 	utc     span      // of instants, and of wall clocks below
 	wall    span
+}
+
+// rows runs visit over the rows that the pick takes, of all parts of all
+// sources: as pool.each does, with the columns asked for at the front of the
+// batch. The rows left out are counted in the worker's account, all rows by file
+// where it has such counts. The picker returned knows the times of all rows that
+// visit noted.
+func (r *reading) rows(ctx context.Context, sources []events.Source, w *pool, columns []string, counts func(worker int) (*events.Account, []int64),
+	visit func(worker, file int, b events.Batch, k *picker) error) (*picker, error) {
+	pickers := make([]picker, max(1, w.workers))
+	for i := range pickers {
+		pickers[i].pick = r.pick
+	}
+	count := func(worker, file int, n int64) *events.Account {
+		a, perFile := counts(worker)
+		if perFile != nil {
+			perFile[file] += n
+		}
+		return a
+	}
+	skip := func(worker int, p part) int64 {
+		a, _ := counts(worker)
+		n := pickers[worker].skip(p.source, p.file, p.index, a)
+		count(worker, p.file, n)
+		return n
+	}
+	all := append(slices.Clone(columns), r.pick.columns()...)
+	err := w.each(ctx, sources, all, skip, func(worker, file int, b events.Batch) error {
+		a := count(worker, file, int64(b.Len()))
+		k := &pickers[worker]
+		return visit(worker, file, k.apply(file, b, len(columns), a), k)
+	})
+	for i := range pickers[1:] {
+		pickers[0].utc.merge(pickers[i+1].utc)
+		pickers[0].wall.merge(pickers[i+1].wall)
+	}
+	return &pickers[0], err
 }
 
 // span is a least and greatest time; the zero value is empty.

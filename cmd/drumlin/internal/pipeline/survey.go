@@ -189,7 +189,7 @@ func (v *surveying) outlook(ctx context.Context, out *survey.Report, w *pool) er
 		out.Map.Refusal = fmt.Sprintf("%s: %s", ErrNoEvents, reasonsText(counted.account))
 		return nil
 	}
-	counted.tally.Trim(counted.tally.CoreBox())
+	counted.tally.TrimStrays()
 	out.Map.OutsideExtent = counted.tally.Outside()
 	if n := counted.tally.Events(); n < leastEvents {
 		out.Map.Refusal = fmt.Sprintf("%d events are too few for a map", n)

@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"path/filepath"
 	"runtime"
 	"runtime/debug"
 	"slices"
@@ -144,6 +145,9 @@ func (r *run) recordedSettings(in *reading) record.Settings {
 	}
 	if s.Scale != 0 {
 		out = append(out, record.Setting{Name: "scale", Value: s.Scale})
+	}
+	if s.Context != "" {
+		out = append(out, record.Setting{Name: "context", Value: filepath.Base(s.Context)})
 	}
 	return append(out, record.Settings{
 		{Name: "content", Value: slices.Sorted(slices.Values(s.Content))}, {Name: "bands", Value: s.Bands}, {Name: "lattice", Value: s.Lattice},
