@@ -80,15 +80,15 @@ func TestForeignFiles(t *testing.T) {
 			default:
 				want = [2]int{0, 4}
 			}
-			for k, args := range [][]string{{"survey", path, "--json"}, {"map", path, "--out", filepath.Join(t.TempDir(), "map"), "--quiet"}} {
-				ctx, cancel := context.WithTimeout(t.Context(), 30*time.Second)
+			for k, args := range [][]string{{"survey", path, "--json"}, {"map", path, "--out", filepath.Join(t.TempDir(), "map"), "--quiet", "--lattice", "256", "--sensitivity=false"}} {
+				ctx, cancel := context.WithTimeout(t.Context(), 120*time.Second)
 				defer cancel()
 				var stdout, stderr bytes.Buffer
 				c := exec.CommandContext(ctx, bin, args...)
 				c.Stdout, c.Stderr = &stdout, &stderr
 				err := c.Run()
 				if ctx.Err() != nil {
-					t.Fatalf("%s: no answer after 30 s", args[0])
+					t.Fatalf("%s: no answer after 120 s", args[0])
 				}
 				status := c.ProcessState.ExitCode()
 				switch {

@@ -59,11 +59,11 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 	for k := range batch {
 		batch[k] = make([]float64, batchRows)
 	}
-	texts := make([]*words, len(columns))
+	texts := make([]*events.Words, len(columns))
 	listed := false
 	for k, i := range at {
 		if f.fields[i].Class == events.Text {
-			texts[k], listed = new(words), true
+			texts[k], listed = new(events.Words), true
 		}
 	}
 	views := make([][]float64, len(columns))
@@ -76,7 +76,7 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 			b.Words = make([][]string, len(columns))
 			for k, w := range texts {
 				if w != nil {
-					b.Words[k] = w.list
+					b.Words[k] = w.List()
 				}
 			}
 		}
@@ -85,7 +85,7 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 		}
 		for _, w := range texts {
 			if w != nil {
-				w.next()
+				w.Next()
 			}
 		}
 		return nil
@@ -102,7 +102,7 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 		bound.step(r)
 		for k, i := range at {
 			if texts[k] != nil {
-				batch[k][n] = texts[k].code(rec[i])
+				batch[k][n] = code(texts[k], rec[i])
 			} else {
 				batch[k][n] = number(rec[i])
 			}

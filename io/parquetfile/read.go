@@ -137,8 +137,8 @@ func (f *File) ReadCoded(ctx context.Context, part int, columns []string, codes 
 		if listed {
 			b.Words = make([][]string, len(columns))
 			for k := range columns {
-				if own, ok := codes[k].(*words); ok {
-					b.Words[k] = own.list
+				if own, ok := codes[k].(*events.Words); ok {
+					b.Words[k] = own.List()
 				}
 			}
 		}
@@ -155,7 +155,7 @@ func (f *File) coders(at []int, given []Coder) (codes []Coder, listed bool) {
 	copy(codes, given)
 	for k, i := range at {
 		if f.leaves[i].kind == kindCode && codes[k] == nil {
-			codes[k], listed = new(words), true
+			codes[k], listed = new(events.Words), true
 		} else if f.leaves[i].kind != kindCode {
 			codes[k] = nil
 		}

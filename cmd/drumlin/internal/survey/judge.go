@@ -131,7 +131,7 @@ func (r *Report) Conclude() {
 		say("%s and %s look the wrong way round: %d rows have a latitude beyond 90 and a longitude within it; try --x %s --y %s", c.X, c.Y, c.Swapped, c.Y, c.X)
 	}
 	if c.NullIsland > 0 {
-		say("%d rows lie at 0, 0, which usually means that no position was found; leave them out with --where, if so", c.NullIsland)
+		say("%d rows lie at 0, 0, which usually means that no position was found; in degrees map sets them aside", c.NullIsland)
 	}
 	for _, s := range c.Sentinels {
 		say("%d rows have %g for a coordinate, which often stands for unknown", s.Rows, s.Value)
