@@ -37,9 +37,9 @@ const (
 // repeated positions as sharp peaks: three-stage plug-in is taken, and a note
 // says so. Without node counts and sample likewise.
 //
-// Criterion is the averaged mean integrated squared error, Variance and Bias2
-// its parts by R(K)/(n |H|^1/2); where plug-in or cross-validation decided they
-// are those of that choice. On the study's targets this stays closer to the
+// Criterion is the averaged mean integrated squared error, or the criterion of
+// the selector that decided. Pilots, Variance and Bias2 are three-stage
+// plug-in's evidence about the matrix, whatever decided. On the study's targets this stays closer to the
 // optimum than any selector that it chooses from: see Guidance in the package
 // comment.
 //
@@ -57,7 +57,11 @@ func Auto(e Events, opt Options) (Choice, error) {
 		return Choice{}, err
 	}
 	auto := func(c Choice, note string) (Choice, error) {
-		c.Method, c.Shape = "auto", opt.Shape
+		c.Method, c.Shape, c.Pilots = "auto", opt.Shape, plug.Pilots
+		psi := plug.Pilots[len(plug.Pilots)-1].Psi
+		if a, err := mv.AMISE(mv.Gaussian, c.Matrix, psi, e.n()); err == nil {
+			c.Variance, c.Bias2 = a.Variance, a.SquaredBias
+		}
 		c.Notes = append([]string{note}, c.Notes...)
 		return c.finish(whole, c.Matrix)
 	}

@@ -129,7 +129,7 @@ func errorWords(peaks []spatial.Peak) []any {
 
 func bandwidthOrigin(method string) template.HTML {
 	switch method {
-	case "plug-in":
+	case "auto", "plug-in":
 		return "That amount was chosen from the events to make the estimated error least."
 	case "normal-reference":
 		return "That amount is the reference for a single bell-shaped cluster; with several clusters it smooths too much."

@@ -148,7 +148,7 @@ amount by which smoothing lowers them.`,
 		return fmt.Errorf("%w: %w; see drumlin %s --help", errUsage, err, c.Name())
 	})
 	root.SetHelpTemplate(root.HelpTemplate() + exitHelp)
-	root.AddCommand(a.mapCommand(), a.surveyCommand(), a.evaluateCommand(), a.demoCommand(), a.versionCommand())
+	root.AddCommand(a.mapCommand(), a.surveyCommand(), a.bandwidthCommand(), a.evaluateCommand(), a.demoCommand(), a.versionCommand())
 	for _, c := range root.Commands() {
 		c.Args = usageArgs(c.Args)
 	}

@@ -9,7 +9,7 @@ import (
 )
 
 // BandwidthNames are the selectors, the default first.
-var BandwidthNames = []string{"plug-in", "scv", "lscv", "bcv", "likelihood-cv", "normal-reference"}
+var BandwidthNames = []string{"auto", "plug-in", "scv", "lscv", "bcv", "likelihood-cv", "normal-reference"}
 
 // BandwidthSettings are what a run of bandwidth was asked to do.
 type BandwidthSettings struct {

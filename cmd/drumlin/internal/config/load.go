@@ -45,7 +45,7 @@ func SurveyFlags(f *pflag.FlagSet) {
 // MapFlags declares the flags of map with their defaults.
 func MapFlags(f *pflag.FlagSet) {
 	InputFlags(f)
-	f.String("bandwidth", "plug-in", "how the bandwidth matrix is chosen: plug-in, normal-reference")
+	f.String("bandwidth", BandwidthNames[0], "how the bandwidth matrix is chosen: "+strings.Join(BandwidthNames, ", "))
 	f.String("shape", "full", "form of the bandwidth matrix: full, diagonal, scalar")
 	f.String("matrix", "", "a fixed bandwidth matrix h11,h12,h22 in square metres")
 	f.Float64("scale", 0, "a fixed bandwidth of scale h in metres, the same in all directions")

@@ -90,7 +90,7 @@ func (s *Settings) Validate() error {
 		bad("out is missing; name the folder to write, for example --out map")
 	}
 	s.checkRows(bad)
-	oneOf("bandwidth", s.Bandwidth, "plug-in", "normal-reference")
+	oneOf("bandwidth", s.Bandwidth, BandwidthNames...)
 	oneOf("shape", s.Shape, "full", "diagonal", "scalar")
 	oneOf("region-rule", s.RegionRule, "events", "mass")
 	for _, v := range s.Formats {

@@ -106,10 +106,9 @@ func Bandwidths(ctx context.Context, s *config.BandwidthSettings, report *progre
 		if counted.account.Used == 0 {
 			return nil, fmt.Errorf("%w: %s", ErrNoEvents, reasonsText(counted.account))
 		}
-		box := counted.tally.CoreBox()
-		counted.tally.Trim(box)
-		c.m = &estimator{tally: counted.tally, sel: Selection{Method: "plug-in"}, workers: r.workers, canRepeat: pass < mostPasses, progress: report.Stage}
-		table, err := c.table(ctx, box)
+		counted.tally.TrimStrays()
+		c.m = &estimator{tally: counted.tally, sel: Selection{Method: "auto"}, workers: r.workers, canRepeat: pass < mostPasses, progress: report.Stage}
+		table, err := c.table(ctx)
 		var finer *finerNeeded
 		if errors.As(err, &finer) {
 			opt.Finest, opt.Tiles, opt.Box = max(finer.Level, opt.Grain+6), finerTiles, &finer.Box
@@ -142,7 +141,7 @@ type comparison struct {
 }
 
 // table runs all selectors on one lattice, finer where their matrices ask it.
-func (c *comparison) table(ctx context.Context, box mv.Box) (*Table, error) {
+func (c *comparison) table(ctx context.Context) (*Table, error) {
 	t := c.m.tally
 	if t.Events() < 3 {
 		return nil, fmt.Errorf("%d events are too few: %w", t.Events(), mv.ErrDegenerate)
@@ -186,7 +185,7 @@ func (c *comparison) table(ctx context.Context, box mv.Box) (*Table, error) {
 		var coarse []int
 		for _, i := range todo {
 			if rows[i] == "likelihood-cv" && c.sample == nil {
-				if c.sample, err = c.in.drawSample(ctx, c.run.sources, c.pool, &box, bandwidth.SubSample); err != nil {
+				if c.sample, err = c.in.drawSample(ctx, c.run.sources, c.pool, occupiedBox(t), bandwidth.SubSample); err != nil {
 					return nil, err
 				}
 			}

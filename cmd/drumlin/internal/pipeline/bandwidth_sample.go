@@ -102,3 +102,13 @@ func positionHash(x, y float64) uint64 {
 	}
 	return h
 }
+
+// occupiedBox returns the box of a tally's nodes that carry something.
+func occupiedBox(t *mv.Tally) *mv.Box {
+	lo, hi := t.Bounds()
+	b := &mv.Box{}
+	for k := range 2 {
+		b.Min[k], b.Max[k] = float64(lo[k])*t.Step(), float64(hi[k])*t.Step()
+	}
+	return b
+}

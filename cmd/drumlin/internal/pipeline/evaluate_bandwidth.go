@@ -12,8 +12,9 @@ import (
 )
 
 const (
-	mostSelectorColumns = 4 // beyond, the functionals of order 10 are thousands of sums
-	lattices            = 3 // dimensions in which a lattice carries the selectors
+	mostSelectorColumns = 4       // beyond, the functionals of order 10 are thousands of sums
+	lattices            = 3       // dimensions in which a lattice carries the selectors
+	mostSelectorNodes   = 1 << 23 // of a refined lattice
 )
 
 // fewEvents is the number of events, by columns, up to which direct sums are
@@ -103,36 +104,36 @@ func (e *evaluation) selectFor(shape bandwidth.Shape) (c bandwidth.Choice, pilot
 		return c, pilot, err
 	}
 	in := bandwidth.FromSample(e.sample, e.s.Workers)
-	if d <= lattices && e.sample.Len() > fewEvents[d] {
-		if in, err = e.spectral(cov, n); err != nil {
-			return c, pilot, err
-		}
-	}
-	opt := bandwidth.Options{Shape: shape}
-	switch e.s.Bandwidth {
-	case "plug-in":
-		c, err = bandwidth.PlugInBy(in, opt)
-	case "scv":
-		c, err = bandwidth.SmoothedCV(in, opt)
-	case "lscv":
-		c, err = bandwidth.LeastSquaresCV(in, opt)
-	case "bcv":
-		c, err = bandwidth.BiasedCV(in, opt)
-	case "likelihood-cv":
-		c, err = bandwidth.LikelihoodCrossValidation(in, opt)
-	default:
-		err = fmt.Errorf("no selector %q", e.s.Bandwidth)
-	}
-	if err != nil {
-		return c, pilot, err
-	}
-	if in.Spectrum != nil {
-		lat := in.Spectrum.Lattice()
-		for k := range d {
-			if steps := 1 / (math.Sqrt(c.Matrix.InvAt(k, k)) * lat.Step[k]); steps < stepsWanted {
-				c.Notes = append(c.Notes, fmt.Sprintf("H spans %.2g steps of the selector's lattice on column %s, fewer than %g; far strays may be the reason", steps, e.s.Columns[k], stepsWanted))
+	onLattice := d <= lattices && e.sample.Len() > fewEvents[d]
+	nodes := [...][]int{nil, {1 << 14}, {1024, 1024}, {160, 160, 160}}
+	for pass := 0; ; pass++ {
+		if onLattice {
+			if in, err = e.spectral(cov, n, nodes[d]); err != nil {
+				return c, pilot, err
 			}
 		}
+		if c, err = chooseBy(e.s.Bandwidth, in, bandwidth.Options{Shape: shape}); err != nil {
+			return c, pilot, err
+		}
+		if !onLattice {
+			break
+		}
+		// A lattice too coarse for H is refined once, axis by axis.
+		finer, short := nodesFor(c.Matrix, in.Spectrum.Lattice())
+		if !short {
+			break
+		}
+		if pass == 0 && finer != nil {
+			nodes[d] = finer
+			continue
+		}
+		lat := in.Spectrum.Lattice()
+		for k, name := range e.s.Columns {
+			if steps := stepsPerScale(c.Matrix, lat, k); steps < stepsWanted {
+				c.Notes = append(c.Notes, fmt.Sprintf("H spans %.2g steps of the selector's lattice on column %s, fewer than %g; far strays may be the reason", steps, name, stepsWanted))
+			}
+		}
+		break
 	}
 	if d > lattices {
 		return c, widerPilot(e.sample, c.Matrix, mv.Gaussian), nil
@@ -145,10 +146,49 @@ func (e *evaluation) selectFor(shape bandwidth.Shape) (c bandwidth.Choice, pilot
 	return c, p.Matrix, err
 }
 
+func chooseBy(name string, in bandwidth.Events, opt bandwidth.Options) (bandwidth.Choice, error) {
+	switch name {
+	case "plug-in":
+		return bandwidth.PlugInBy(in, opt)
+	case "scv":
+		return bandwidth.SmoothedCV(in, opt)
+	case "lscv":
+		return bandwidth.LeastSquaresCV(in, opt)
+	case "bcv":
+		return bandwidth.BiasedCV(in, opt)
+	case "likelihood-cv":
+		return bandwidth.LikelihoodCrossValidation(in, opt)
+	}
+	return bandwidth.Choice{}, fmt.Errorf("no selector %q", name)
+}
+
+// stepsPerScale returns how many lattice steps H's narrowest section along an
+// axis spans, a scale wide.
+func stepsPerScale(h mv.BandwidthMatrix, lat mv.Lattice, k int) float64 {
+	return 1 / (math.Sqrt(h.InvAt(k, k)) * lat.Step[k])
+}
+
+// nodesFor returns the nodes per axis that would show H with half as many
+// steps again as wanted, nil when they are too many, and whether the lattice
+// has too few.
+func nodesFor(h mv.BandwidthMatrix, lat mv.Lattice) (nodes []int, short bool) {
+	total := 1.0
+	for k, n := range lat.N {
+		steps := stepsPerScale(h, lat, k)
+		short = short || steps < stepsWanted
+		want := max(64, math.Ceil(float64(n)*1.5*stepsWanted/steps))
+		total *= want
+		nodes = append(nodes, int(min(want, 1<<20)))
+	}
+	if total > mostSelectorNodes {
+		return nil, short
+	}
+	return nodes, short
+}
+
 // spectral bins the sample on a lattice over its extent.
-func (e *evaluation) spectral(cov []float64, n float64) (in bandwidth.Events, err error) {
+func (e *evaluation) spectral(cov []float64, n float64, nodes []int) (in bandwidth.Events, err error) {
 	d := e.sample.Dim()
-	nodes := []int{0, 1 << 14, 1024, 160}[d]
 	widest, err := bandwidth.NormalScalePilot(cov, d, n, bandwidth.WidestOrder)
 	if err != nil {
 		return in, fmt.Errorf("the events lie at one place or on a line: %w", mv.ErrDegenerate)
@@ -159,7 +199,7 @@ func (e *evaluation) spectral(cov []float64, n float64) (in bandwidth.Events, er
 		for _, v := range c {
 			lo, hi = min(lo, v), max(hi, v)
 		}
-		step[k] = (hi - lo) / float64(nodes-2)
+		step[k] = (hi - lo) / float64(nodes[k]-2)
 		reach[k] = kernelReach * math.Sqrt(widest.At(k, k))
 	}
 	lat, err := mv.LatticeAround(e.sample, step, margin)

@@ -13,6 +13,7 @@ import (
 	"slices"
 	"time"
 
+	"drumlin/bandwidth"
 	"drumlin/cmd/drumlin/internal/config"
 	"drumlin/cmd/drumlin/internal/progress"
 	"drumlin/io/events"
@@ -77,6 +78,9 @@ func (r *run) timed(name string, f func() error) error {
 }
 
 func (r *run) do(ctx context.Context) (*Result, error) {
+	if err := r.checkPicture(); err != nil {
+		return nil, err
+	}
 	target, err := r.openTarget(ctx)
 	if err != nil {
 		return nil, err
@@ -124,6 +128,11 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		sel, err := r.selection()
 		if err != nil {
 			return nil, err
+		}
+		if sel.Method == "likelihood-cv" {
+			if sel.Sample, err = in.drawSample(ctx, r.sources, w, occupiedBox(counted.tally), bandwidth.SubSample); err != nil {
+				return nil, err
+			}
 		}
 		m := &estimator{tally: counted.tally, sel: sel, nodes: r.settings.Nodes(), workers: r.workers, canRepeat: pass < mostPasses, progress: r.report.Stage}
 		err = r.timed("estimate", func() (err error) { est, err = m.estimate(ctx); return err })

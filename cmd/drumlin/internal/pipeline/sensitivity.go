@@ -100,7 +100,7 @@ func choices(e *Estimate) []report.Choice {
 			Method: c.Method, Shape: c.Shape.String(), Major: ell.Major, Minor: ell.Minor, Bearing: ell.Bearing,
 			Criterion: c.Criterion, Status: c.Status.String(), Evaluations: c.Evaluations, Used: i == 0, Notes: c.Notes,
 		}
-		if used.Method == "plug-in" {
+		if len(used.Pilots) > 0 {
 			if bias, variance, ok := errorAt(used, c.Matrix); ok {
 				q.SquaredBias, q.Variance = bias, variance
 				q.EstimatedErrorRatio = (bias + variance) / (used.Bias2 + used.Variance)

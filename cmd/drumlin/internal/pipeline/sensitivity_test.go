@@ -8,14 +8,14 @@ import (
 	"drumlin/spatial"
 )
 
-func box(x0, y0, x1, y1 float64) spatial.Ring {
+func rectangle(x0, y0, x1, y1 float64) spatial.Ring {
 	return spatial.Ring{{X: x0, Y: y0}, {X: x1, Y: y0}, {X: x1, Y: y1}, {X: x0, Y: y1}}
 }
 
 // Shared ground over the ground of both, against areas known by hand.
 func TestOverlap(t *testing.T) {
-	square := spatial.MultiPolygon{{box(0, 0, 10, 10)}}
-	hole := box(4, 4, 6, 6)
+	square := spatial.MultiPolygon{{rectangle(0, 0, 10, 10)}}
+	hole := rectangle(4, 4, 6, 6)
 	slices.Reverse(hole)
 	for _, c := range []struct {
 		name string
@@ -23,11 +23,11 @@ func TestOverlap(t *testing.T) {
 		want float64
 	}{
 		{"itself", square, square, 1},
-		{"half a side over", square, spatial.MultiPolygon{{box(5, 0, 15, 10)}}, 50.0 / 150},
-		{"a corner", square, spatial.MultiPolygon{{box(5, 5, 15, 15)}}, 25.0 / 175},
-		{"apart", square, spatial.MultiPolygon{{box(20, 0, 30, 10)}}, 0},
-		{"a hole", square, spatial.MultiPolygon{{box(0, 0, 10, 10), hole}}, 0.96},
-		{"two parts", square, spatial.MultiPolygon{{box(0, 0, 2, 10)}, {box(8, 0, 10, 10)}}, 0.4},
+		{"half a side over", square, spatial.MultiPolygon{{rectangle(5, 0, 15, 10)}}, 50.0 / 150},
+		{"a corner", square, spatial.MultiPolygon{{rectangle(5, 5, 15, 15)}}, 25.0 / 175},
+		{"apart", square, spatial.MultiPolygon{{rectangle(20, 0, 30, 10)}}, 0},
+		{"a hole", square, spatial.MultiPolygon{{rectangle(0, 0, 10, 10), hole}}, 0.96},
+		{"two parts", square, spatial.MultiPolygon{{rectangle(0, 0, 2, 10)}, {rectangle(8, 0, 10, 10)}}, 0.4},
 		{"nothing", nil, nil, 0},
 		{"one is nothing", square, nil, 0},
 	} {

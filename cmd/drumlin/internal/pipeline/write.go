@@ -168,8 +168,10 @@ func bandwidthRecord(e *Estimate) record.Bandwidth {
 	if c.Method == "fixed" {
 		b.Status = "fixed"
 	}
-	if c.Method == "plug-in" {
+	if c.Method != "fixed" && c.Status != bandwidth.Closed {
 		b.Criterion = &c.Criterion
+	}
+	if c.Bias2 > 0 {
 		b.AMISE = &record.AMISE{SquaredBias: c.Bias2, Variance: c.Variance}
 	}
 	for i, p := range c.Pilots {
