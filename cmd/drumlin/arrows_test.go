@@ -36,7 +36,7 @@ drawing        = golang.org/x/image
 testscript     = github.com/rogpeppe/go-internal
 
 arrow readers  = io/parquetfile, io/arrowfile
-plain readers  = io/csvfile
+plain readers  = io/csvfile, io/partition, io/cql2
 writers        = io/geojson, io/geotiff
 table writers  = io/flatgeobuf, io/geoparquet
 inner          = cmd/drumlin/internal
@@ -45,18 +45,20 @@ std, gonum < mv/internal < mv < mv/mvtest
 mv, gonum/optimize < bandwidth
 mv, orb, simplefeatures < spatial
 std < io/events, io/record, io/internal < plain readers, arrow readers
-arrow, packing < arrow readers
+arrow, packing < arrow readers < io/geoparquet
+std, io/events, packing < io/packed
 spatial, io/events, io/record, io/internal, packing < writers < io/report, io/bundle
 drawing < io/report
 spatial < io/layers < table writers
 arrow, flatbuffers < table writers
 
-mv, bandwidth, spatial, io/events, io/record, plain readers, arrow readers, writers, table writers, io/report, io/bundle < everything
+mv, bandwidth, spatial, io/events, io/record, plain readers, arrow readers, io/packed, writers, table writers, io/report, io/bundle < everything
 viper < inner/config
 terminal < inner/progress
-everything, inner/config, inner/progress < inner/pipeline < inner/batch
+everything < inner/survey
+everything, inner/config, inner/progress, inner/survey < inner/pipeline < inner/batch
 everything < inner/demo
-everything, cobra, viper, terminal, inner/batch, inner/pipeline, inner/demo < inner/cli < cmd/drumlin
+everything, cobra, viper, terminal, inner/batch, inner/pipeline, inner/survey, inner/demo < inner/cli < cmd/drumlin
 testscript < tests
 `
 

@@ -70,6 +70,8 @@ func runScripts(t *testing.T, dir string) {
 			"balanced":    cmdBalanced,
 			"jsonlines":   cmdJSONLines,
 			"empty":       cmdEmpty,
+			"extract":     cmdExtract,
+			"pack":        cmdPack,
 		},
 	})
 }

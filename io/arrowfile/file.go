@@ -149,7 +149,7 @@ func (f *File) walk(fields []arrow.Field, prefix string, path []int, depth int) 
 			f.walk(st.Fields(), name+".", at, depth-1)
 			continue
 		}
-		f.fields = append(f.fields, events.Field{Name: name, Type: c.Type.String(), Numeric: numeric(c.Type)})
+		f.fields = append(f.fields, events.Field{Name: name, Type: c.Type.String(), Numeric: numeric(c.Type), Class: class(c.Type)})
 		f.leaves = append(f.leaves, leaf{at, c.Type})
 	}
 }
@@ -188,7 +188,7 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 	}
 	at := make([]int, len(columns))
 	for k, name := range columns {
-		if err := events.CheckNumeric(name, f.fields); err != nil {
+		if err := events.CheckReadable(name, f.fields); err != nil {
 			var fault *events.Fault
 			if errors.As(err, &fault) {
 				fault.File = f.path
@@ -216,8 +216,13 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 	}
 	defer r.Release()
 	batch, views := make([][]float64, len(columns)), make([][]float64, len(columns))
+	words := make([]*events.Words, len(columns))
+	listed := false
 	for k := range batch {
 		batch[k] = make([]float64, batchRows)
+		if f.fields[at[k]].Class == events.Text {
+			words[k], listed = new(events.Words), true
+		}
 	}
 	for {
 		if err := ctx.Err(); err != nil {
@@ -248,11 +253,23 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 			n := min(batchRows, int(rows)-done)
 			for k, i := range at {
 				views[k] = batch[k][:n]
-				if err := f.guard(func() error { return f.leaves[i].values(views[k], rec, done) }); err != nil {
+				if words[k] != nil {
+					words[k].Next()
+				}
+				if err := f.guard(func() error { return f.leaves[i].values(views[k], rec, done, words[k]) }); err != nil {
 					return err
 				}
 			}
-			if err := yield(events.Batch{Columns: views}); err != nil {
+			b := events.Batch{Columns: views}
+			if listed {
+				b.Words = make([][]string, len(columns))
+				for k, w := range words {
+					if w != nil {
+						b.Words[k] = w.List()
+					}
+				}
+			}
+			if err := yield(b); err != nil {
 				return err
 			}
 		}

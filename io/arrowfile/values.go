@@ -13,15 +13,42 @@ import (
 func numeric(t arrow.DataType) bool {
 	switch t.ID() {
 	case arrow.INT8, arrow.INT16, arrow.INT32, arrow.INT64, arrow.UINT8, arrow.UINT16, arrow.UINT32, arrow.UINT64,
-		arrow.FLOAT16, arrow.FLOAT32, arrow.FLOAT64, arrow.DECIMAL128, arrow.DECIMAL256:
+		arrow.FLOAT16, arrow.FLOAT32, arrow.FLOAT64, arrow.DECIMAL128, arrow.DECIMAL256, arrow.BOOL:
 		return true
 	}
 	return false
 }
 
+// class tells what a column's values mean.
+func class(t arrow.DataType) events.Class {
+	switch t := t.(type) {
+	case *arrow.StringType, *arrow.LargeStringType:
+		return events.Text
+	case *arrow.DictionaryType:
+		return textOnly(class(t.ValueType))
+	case *arrow.TimestampType:
+		if t.TimeZone != "" {
+			return events.Instant
+		}
+		return events.WallClock
+	case *arrow.Date32Type, *arrow.Date64Type:
+		return events.WallClock
+	case *arrow.BooleanType:
+		return events.Truth
+	}
+	return events.Plain
+}
+
+func textOnly(c events.Class) events.Class {
+	if c == events.Text {
+		return c
+	}
+	return events.Plain
+}
+
 // values writes the leaf's values of rows from on into dst; a null, of the
-// leaf or of a struct above it, is events.Null.
-func (l leaf) values(dst []float64, rec arrow.Record, from int) error {
+// leaf or of a struct above it, is events.Null. Text goes through w.
+func (l leaf) values(dst []float64, rec arrow.Record, from int, w *events.Words) error {
 	col := rec.Column(l.path[0])
 	above := []arrow.Array{}
 	for _, i := range l.path[1:] {
@@ -35,7 +62,7 @@ func (l leaf) values(dst []float64, rec arrow.Record, from int) error {
 	if !arrow.TypeEqual(col.DataType(), l.typ) || col.Len() < from+len(dst) {
 		return fmt.Errorf("column %s holds %d values of %s where %d of %s are announced", rec.ColumnName(l.path[0]), col.Len(), col.DataType(), rec.NumRows(), l.typ)
 	}
-	if err := convert(dst, col, from); err != nil {
+	if err := convert(dst, col, from, w); err != nil {
 		return err
 	}
 	for _, a := range append(above, col) {
@@ -57,7 +84,7 @@ func fill[T int8 | int16 | int32 | int64 | uint8 | uint16 | uint32 | uint64 | fl
 	}
 }
 
-func convert(dst []float64, col arrow.Array, from int) error {
+func convert(dst []float64, col arrow.Array, from int, w *events.Words) error {
 	switch c := col.(type) {
 	case *array.Float64:
 		copy(dst, c.Float64Values()[from:from+len(dst)])
@@ -93,8 +120,75 @@ func convert(dst []float64, col arrow.Array, from int) error {
 		for i, x := range c.Values()[from : from+len(dst)] {
 			dst[i] = x.ToFloat64(scale)
 		}
+	case *array.Boolean:
+		for i := range dst {
+			dst[i] = 0
+			if c.Value(from + i) {
+				dst[i] = 1
+			}
+		}
+	case *array.Timestamp:
+		unit := c.DataType().(*arrow.TimestampType).Unit
+		for i, x := range c.TimestampValues()[from : from+len(dst)] {
+			dst[i] = micros(int64(x), unit)
+		}
+	case *array.Date32:
+		for i, x := range c.Date32Values()[from : from+len(dst)] {
+			dst[i] = float64(x) * 86400e6
+		}
+	case *array.Date64:
+		for i, x := range c.Date64Values()[from : from+len(dst)] {
+			dst[i] = float64(x) * 1000
+		}
+	case *array.Dictionary:
+		return fillText(dst, from, w, c, func(i int) (arrow.Array, int) { return c.Dictionary(), c.GetValueIndex(i) })
+	case *array.String, *array.LargeString:
+		return fillText(dst, from, w, col, func(i int) (arrow.Array, int) { return col, i })
 	default:
 		return fmt.Errorf("a column of %s holds no numbers", col.DataType())
+	}
+	return nil
+}
+
+// micros turns a time of a unit into microseconds, cut downwards.
+func micros(v int64, unit arrow.TimeUnit) float64 {
+	switch unit {
+	case arrow.Second:
+		return float64(v) * 1e6
+	case arrow.Millisecond:
+		return float64(v) * 1000
+	case arrow.Nanosecond:
+		q := v / 1000
+		if v%1000 < 0 {
+			q--
+		}
+		return float64(q)
+	}
+	return float64(v)
+}
+
+// fillText codes texts; at says where the text of a row stands.
+func fillText(dst []float64, from int, w *events.Words, col arrow.Array, at func(i int) (arrow.Array, int)) error {
+	for i := range dst {
+		dst[i] = events.Null
+		if col.IsNull(from + i) {
+			continue
+		}
+		values, k := at(from + i)
+		if k < 0 || k >= values.Len() {
+			return fmt.Errorf("index %d in a dictionary of %d", k, values.Len())
+		}
+		if values.IsNull(k) {
+			continue
+		}
+		switch t := values.(type) {
+		case *array.String:
+			dst[i] = w.CodeText(t.Value(k))
+		case *array.LargeString:
+			dst[i] = w.CodeText(t.Value(k))
+		default:
+			return fmt.Errorf("a dictionary of %s holds no text", values.DataType())
+		}
 	}
 	return nil
 }

@@ -1,4 +1,5 @@
-// Package csvfile reads numeric columns of delimited text as float64 batches.
+// Package csvfile reads columns of delimited text as float64 batches: numbers as
+// they are, text as places in a list of words.
 //
 // Notation: the first line names the columns; the delimiter is the comma,
 // semicolon or tab that the first line holds most of; a cell that is empty, NA

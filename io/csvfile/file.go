@@ -27,6 +27,8 @@ const (
 // use.
 type File struct {
 	path   string
+	format string
+	unpack Unpack // nil for plain text
 	size   int64
 	mod    time.Time
 	delim  rune
@@ -36,11 +38,19 @@ type File struct {
 
 var _ events.Source = (*File)(nil)
 
+// Unpack returns the text in a packed stream. It need not close the stream.
+type Unpack func(io.Reader) (io.ReadCloser, error)
+
 // Open reads the header and the leading rows. Errors are *events.Fault:
 // ErrMissing when the file is not there, ErrMalformed when it is empty, has no
 // header, or one of the leading rows is broken (with its line), ErrUnsupported
 // when it is no regular file or its text is UTF-16.
-func Open(path string) (*File, error) {
+func Open(path string) (*File, error) { return OpenPacked(path, nil, events.FormatCSV) }
+
+// OpenPacked is Open for a file whose text is packed, by gzip for example: it
+// is unpacked anew for every pass, so that no copy of it is kept. format is
+// what Info says.
+func OpenPacked(path string, unpack Unpack, format string) (*File, error) {
 	st, err := os.Stat(path)
 	if err != nil {
 		return nil, missing(path, err)
@@ -48,19 +58,63 @@ func Open(path string) (*File, error) {
 	if !st.Mode().IsRegular() {
 		return nil, &events.Fault{Kind: events.ErrUnsupported, File: path, What: "not a regular file", Remedy: "name a file"}
 	}
-	f := &File{path: path, size: st.Size(), mod: st.ModTime()}
-	h, err := os.Open(path)
-	if err != nil {
-		return nil, missing(path, err)
-	}
-	defer h.Close()
-	if err := f.readHeader(h); err != nil {
-		return nil, err
-	}
-	if err := f.inferTypes(h); err != nil {
-		return nil, err
+	f := &File{path: path, format: format, unpack: unpack, size: st.Size(), mod: st.ModTime()}
+	for _, step := range []func(io.Reader) error{f.readHeader, f.inferTypes} {
+		h, err := f.open()
+		if err != nil {
+			return nil, err
+		}
+		err = step(h)
+		h.Close()
+		if err != nil {
+			return nil, err
+		}
 	}
 	return f, nil
+}
+
+// text is an open stream of text.
+type text struct {
+	io.Reader
+	file   *os.File
+	packed io.Closer // nil for plain text
+}
+
+func (t *text) Close() {
+	if t.packed != nil {
+		_ = t.packed.Close() // read-only
+	}
+	_ = t.file.Close()
+}
+
+// open opens the file and makes sure that it is still the one described.
+func (f *File) open() (*text, error) {
+	h, err := os.Open(f.path)
+	if err != nil {
+		return nil, missing(f.path, err)
+	}
+	if st, err := h.Stat(); err != nil || st.Size() != f.size || !st.ModTime().Equal(f.mod) {
+		h.Close()
+		return nil, f.malformed(0, "the file changed while it was in use", "run again when it is complete")
+	}
+	t := &text{file: h, Reader: io.NewSectionReader(h, 0, f.size)}
+	if f.unpack != nil {
+		r, err := f.unpack(t.Reader)
+		if err != nil {
+			h.Close()
+			return nil, f.broken(err)
+		}
+		t.Reader, t.packed = r, r
+	}
+	return t, nil
+}
+
+// broken is the fault of a stream that cannot be read on.
+func (f *File) broken(err error) error {
+	if f.unpack == nil {
+		return &events.Fault{Kind: events.ErrMissing, File: f.path, What: "cannot be read", Cause: err}
+	}
+	return &events.Fault{Kind: events.ErrMalformed, File: f.path, What: "cannot be unpacked", Remedy: "write the file again or leave it out", Cause: err}
 }
 
 func missing(path string, err error) error {
@@ -80,12 +134,13 @@ func (f *File) malformed(line int, what, remedy string) error {
 }
 
 // readHeader looks at the first line: byte-order mark, delimiter, names.
-func (f *File) readHeader(h *os.File) error {
-	head := make([]byte, min(f.size, 64<<10))
-	n, err := h.ReadAt(head, 0)
-	if err != nil && err != io.EOF {
-		return &events.Fault{Kind: events.ErrMissing, File: f.path, What: "cannot be read", Cause: err}
+func (f *File) readHeader(h io.Reader) error {
+	head := make([]byte, 64<<10)
+	n, err := io.ReadFull(h, head)
+	if err != nil && err != io.EOF && err != io.ErrUnexpectedEOF {
+		return f.broken(err)
 	}
+	whole := err != nil
 	head = head[:n]
 	if bytes.HasPrefix(head, []byte("\xff\xfe")) || bytes.HasPrefix(head, []byte("\xfe\xff")) {
 		return &events.Fault{Kind: events.ErrUnsupported, File: f.path, What: "the text is UTF-16", Remedy: "save it as UTF-8"}
@@ -101,8 +156,12 @@ func (f *File) readHeader(h *os.File) error {
 		return f.malformed(0, "the file is not text", "name a Parquet or CSV file")
 	}
 	f.delim = delimiter(head)
-	r, _ := f.reader(h)
-	names, err := r.Read()
+	if !whole { // a header may be longer; its reader stops at the longest row
+		h = io.MultiReader(bytes.NewReader(head), h)
+	} else {
+		h = bytes.NewReader(head)
+	}
+	names, err := f.csv(&bounded{r: h, stop: maxRowBytes}).Read()
 	if err != nil {
 		return f.rowFault(err)
 	}
@@ -167,12 +226,21 @@ func (b *bounded) Read(p []byte) (int, error) {
 }
 
 // reader starts at the header row. The bound must be moved after every row.
-func (f *File) reader(h io.ReaderAt) (*csv.Reader, *bounded) {
-	b := &bounded{r: io.NewSectionReader(h, f.skip, f.size-f.skip), stop: maxRowBytes}
+func (f *File) reader(h io.Reader) (*csv.Reader, *bounded, error) {
+	if f.skip > 0 {
+		if _, err := io.CopyN(io.Discard, h, f.skip); err != nil {
+			return nil, nil, f.broken(err)
+		}
+	}
+	b := &bounded{r: h, stop: maxRowBytes}
+	return f.csv(b), b, nil
+}
+
+func (f *File) csv(b *bounded) *csv.Reader {
 	r := csv.NewReader(bufio.NewReaderSize(b, 64<<10))
 	r.Comma = f.delim
 	r.ReuseRecord = true
-	return r, b
+	return r
 }
 
 // step moves the bound past the row just read.
@@ -188,7 +256,7 @@ func (f *File) rowFault(err error) error {
 	}
 	var p *csv.ParseError
 	if !errors.As(err, &p) {
-		return &events.Fault{Kind: events.ErrMissing, File: f.path, What: "cannot be read", Cause: err}
+		return f.broken(err)
 	}
 	switch {
 	case errors.Is(err, csv.ErrFieldCount):
@@ -200,8 +268,11 @@ func (f *File) rowFault(err error) error {
 }
 
 // inferTypes reads leading rows and tells numbers from text.
-func (f *File) inferTypes(h io.ReaderAt) error {
-	r, b := f.reader(h)
+func (f *File) inferTypes(h io.Reader) error {
+	r, b, err := f.reader(h)
+	if err != nil {
+		return err
+	}
 	r.FieldsPerRecord = len(f.fields)
 	numbers := make([]int, len(f.fields))
 	others := make([]int, len(f.fields))
@@ -232,7 +303,7 @@ func (f *File) inferTypes(h io.ReaderAt) error {
 		case numbers[i] >= 9*others[i] && numbers[i] > 0:
 			f.fields[i].Type, f.fields[i].Numeric = "number", true
 		default:
-			f.fields[i].Type = "text"
+			f.fields[i].Type, f.fields[i].Class = "text", events.Text
 		}
 	}
 	return nil
@@ -240,7 +311,7 @@ func (f *File) inferTypes(h io.ReaderAt) error {
 
 // Info describes the file; the number of rows is not known before reading.
 func (f *File) Info() events.Info {
-	return events.Info{Name: f.path, Format: events.FormatCSV, Bytes: f.size, Rows: -1}
+	return events.Info{Name: f.path, Format: f.format, Bytes: f.size, Rows: -1}
 }
 
 // Fields lists the columns in file order.

@@ -111,7 +111,6 @@ func TestFaults(t *testing.T) {
 		"binary":   {"PAR1\x00\x00\x00", events.ErrMalformed, "not text"},
 		"none":     {"x\n1\n", events.ErrSetting, "no column \"y\""},
 		"twice":    {"x,y,y\n1,2,3\n", events.ErrSetting, "2 columns"},
-		"text":     {"x,y\n1,a\n2,b\n", events.ErrUnsupported, "text"},
 		"name":     {"x,\xff\xfe\xfd\n1,2\n", events.ErrMalformed, "UTF-8"},
 		"deep row": {"x,y\n" + strings.Repeat("1,2\n", 5000) + "1\n", events.ErrMalformed, "line 5002"},
 	} {
@@ -178,7 +177,14 @@ func FuzzCSV(f *testing.F) {
 			return
 		}
 		for _, c := range s.Fields() {
-			check(s.Read(t.Context(), 0, []string{c.Name}, func(b events.Batch) error { return nil }))
+			check(s.Read(t.Context(), 0, []string{c.Name}, func(b events.Batch) error {
+				for _, v := range b.Columns[0] {
+					if c.Class == events.Text && v == v && b.WordsOf(0)[int(v)] == "" {
+						t.Fatal("an empty word")
+					}
+				}
+				return nil
+			}))
 		}
 	})
 }
@@ -202,4 +208,30 @@ func BenchmarkScan(b *testing.B) {
 		}
 	}
 	b.ReportMetric(200_000*float64(b.N)/b.Elapsed().Seconds()/1e6, "Mrows/s")
+}
+
+func TestText(t *testing.T) {
+	f, err := csvfile.Open(put(t, "x,kind,when\n1, a ,2024-01-01\n2,,\n3,b\xff,na\n4,a,2024-01-02T03:04:05Z\n"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	var got []string
+	err = f.Read(t.Context(), 0, []string{"kind", "x", "when"}, func(b events.Batch) error {
+		if b.WordsOf(1) != nil {
+			t.Error("numbers have words")
+		}
+		for i := range b.Len() {
+			for _, k := range []int{0, 2} {
+				if v := b.Columns[k][i]; events.IsNull(v) {
+					got = append(got, "-")
+				} else {
+					got = append(got, b.WordsOf(k)[int(v)])
+				}
+			}
+		}
+		return nil
+	})
+	if want := "a 2024-01-01 - - b\uFFFD - a 2024-01-02T03:04:05Z"; err != nil || strings.Join(got, " ") != want {
+		t.Errorf("%q %v", got, err)
+	}
 }

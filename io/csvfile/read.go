@@ -5,7 +5,6 @@ import (
 	"errors"
 	"fmt"
 	"io"
-	"os"
 	"strconv"
 	"strings"
 
@@ -15,8 +14,7 @@ import (
 // Read yields the named columns of the only part, 0, in row order. It opens
 // the file anew. The context is looked at before every batch and its error is
 // returned unwrapped. Other errors are *events.Fault: ErrSetting for a column
-// that is not there or there twice, ErrUnsupported for one of text,
-// ErrMalformed with the line for a row with another number of cells than the
+// that is not there or there twice, ErrMalformed with the line for a row with another number of cells than the
 // header, a quote out of place, or a row that is too long.
 func (f *File) Read(ctx context.Context, part int, columns []string, yield func(events.Batch) error) error {
 	if part != 0 {
@@ -30,7 +28,7 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 	}
 	at := make([]int, len(columns))
 	for k, name := range columns {
-		if err := events.CheckNumeric(name, f.fields); err != nil {
+		if err := events.CheckReadable(name, f.fields); err != nil {
 			var fault *events.Fault
 			if errors.As(err, &fault) {
 				fault.File = f.path
@@ -43,15 +41,15 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 			}
 		}
 	}
-	h, err := os.Open(f.path)
+	h, err := f.open()
 	if err != nil {
-		return missing(f.path, err)
+		return err
 	}
 	defer h.Close()
-	if st, err := h.Stat(); err != nil || st.Size() != f.size || !st.ModTime().Equal(f.mod) {
-		return f.malformed(0, "the file changed while it was in use", "run again when it is complete")
+	r, bound, err := f.reader(h)
+	if err != nil {
+		return err
 	}
-	r, bound := f.reader(h)
 	r.FieldsPerRecord = len(f.fields)
 	if _, err := r.Read(); err != nil {
 		return f.rowFault(err)
@@ -61,12 +59,36 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 	for k := range batch {
 		batch[k] = make([]float64, batchRows)
 	}
+	texts := make([]*events.Words, len(columns))
+	listed := false
+	for k, i := range at {
+		if f.fields[i].Class == events.Text {
+			texts[k], listed = new(events.Words), true
+		}
+	}
 	views := make([][]float64, len(columns))
 	emit := func(n int) error {
+		b := events.Batch{Columns: views}
 		for k := range views {
 			views[k] = batch[k][:n]
 		}
-		return yield(events.Batch{Columns: views})
+		if listed {
+			b.Words = make([][]string, len(columns))
+			for k, w := range texts {
+				if w != nil {
+					b.Words[k] = w.List()
+				}
+			}
+		}
+		if err := yield(b); err != nil {
+			return err
+		}
+		for _, w := range texts {
+			if w != nil {
+				w.Next()
+			}
+		}
+		return nil
 	}
 	n := 0
 	for {
@@ -79,7 +101,11 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 		}
 		bound.step(r)
 		for k, i := range at {
-			batch[k][n] = number(rec[i])
+			if texts[k] != nil {
+				batch[k][n] = code(texts[k], rec[i])
+			} else {
+				batch[k][n] = number(rec[i])
+			}
 		}
 		if n++; n == batchRows {
 			if err := emit(n); err != nil {

@@ -12,7 +12,11 @@ type Reason uint8
 
 // The reasons, in order of judgement.
 const (
-	NullCoordinate    Reason = iota // a coordinate is absent
+	Filtered          Reason = iota // does not pass the row filter
+	TimeNull                        // the time is absent or cannot be read
+	OutsideTimeWindow               // before the start, or at or after the end
+	NotAPoint                       // the geometry is no point
+	NullCoordinate                  // a coordinate is absent, or the point is empty
 	NotANumberText                  // a cell of text that is no number
 	NotANumber                      // a coordinate is NaN
 	Infinite                        // a coordinate is infinite
@@ -30,6 +34,7 @@ const (
 )
 
 var reasonNames = [reasons]string{
+	"filtered", "time-null", "outside-time-window", "not-a-point",
 	"null", "not-a-value", "not-a-number", "infinite",
 	"longitude-out-of-range", "latitude-out-of-range", "null-island", "beyond-plane",
 	"weight-null", "weight-not-finite", "weight-negative", "zero-weight",

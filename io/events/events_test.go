@@ -210,7 +210,7 @@ func TestResolve(t *testing.T) {
 		{x: "a", y: "a", f: fields("a", "b"), kind: events.ErrSetting, says: "same column"},
 		{x: "a", y: "b", f: fields("a", "b", "b"), kind: events.ErrSetting, says: "2 columns"},
 		{x: "a", y: "b", f: fields("a", "!b"), kind: events.ErrUnsupported, says: "is text"},
-		{g: "geom", f: fields("geom.x", "geom.y"), want: events.Pair{X: "geom.x", Y: "geom.y"}},
+		{g: "geom", f: fields("geom.x", "geom.y"), want: events.Pair{X: "geom.x", Y: "geom.y", Geometry: "geom"}},
 		{g: "geom", f: fields("!geom"), kind: events.ErrUnsupported, says: "geom"},
 		{g: "geo", f: fields("geom.x", "a"), kind: events.ErrSetting, says: "no point column"},
 		{g: "geom", x: "a", f: fields("a"), kind: events.ErrSetting, says: "twice"},

@@ -8,9 +8,10 @@ import (
 
 // Pair is the two columns that hold the coordinates.
 type Pair struct {
-	X, Y    string // column names as the input spells them
-	Degrees bool   // the names say longitude and latitude
-	Swapped bool   // asked for by name, and the names say latitude first
+	X, Y     string // column names as the input spells them
+	Degrees  bool   // the names say longitude and latitude
+	Swapped  bool   // asked for by name, and the names say latitude first
+	Geometry string // point column the two belong to, "" if none
 }
 
 // pairNames are the names taken without being asked for, lower case, x first.
@@ -60,6 +61,28 @@ func Resolve(x, y, geometry string, fields []Field) (Pair, error) {
 // CheckNumeric returns nil when exactly one field has the name and it can be
 // read as numbers, else a *Fault as Resolve does.
 func CheckNumeric(name string, fields []Field) error {
+	field, err := FindField(name, fields)
+	if err == nil && !field.Numeric {
+		err = &Fault{Kind: ErrUnsupported, What: fmt.Sprintf("column %q is %s, not numbers", name, field.Type),
+			Remedy: "name a column of numbers: " + numericList(fields)}
+	}
+	return err
+}
+
+// CheckReadable returns nil when exactly one field has the name and it can be
+// read at all, else a *Fault.
+func CheckReadable(name string, fields []Field) error {
+	field, err := FindField(name, fields)
+	if err == nil && !field.Readable() {
+		err = &Fault{Kind: ErrUnsupported, What: fmt.Sprintf("column %q is %s, which is not read", name, field.Type),
+			Remedy: "name a column of numbers, text or times"}
+	}
+	return err
+}
+
+// FindField returns the one field with the name, or a *Fault of kind
+// ErrSetting when there is none or more than one.
+func FindField(name string, fields []Field) (Field, error) {
 	found := 0
 	var field Field
 	for _, f := range fields {
@@ -70,14 +93,36 @@ func CheckNumeric(name string, fields []Field) error {
 	}
 	switch {
 	case found == 0:
-		return setting(fmt.Sprintf("no column %q", name), near(name, fields))
+		return field, setting(fmt.Sprintf("no column %q", name), near(name, fields))
 	case found > 1:
-		return setting(fmt.Sprintf("%d columns are called %q", found, name), "rename all but one of them")
-	case !field.Numeric:
-		return &Fault{Kind: ErrUnsupported, What: fmt.Sprintf("column %q is %s, not numbers", name, field.Type),
-			Remedy: "name a column of numbers: " + numericList(fields)}
+		return field, setting(fmt.Sprintf("%d columns are called %q", found, name), "rename all but one of them")
 	}
-	return nil
+	return field, nil
+}
+
+// ResolveIn is Resolve for a source that may declare geometry columns: without
+// names its primary geometry is taken, if it holds points, before columns with
+// telling names.
+func ResolveIn(x, y, geometry string, info Info, fields []Field) (Pair, error) {
+	var refusal error
+	for _, g := range info.Geometries {
+		switch wanted := g.Name == geometry || geometry == "" && g.Primary; {
+		case x != "" || y != "" || !wanted:
+		case g.Refusal == "":
+			return Resolve("", "", g.Name, fields)
+		default:
+			refusal = &Fault{Kind: ErrUnsupported, What: fmt.Sprintf("geometry column %q %s", g.Name, g.Refusal),
+				Remedy: "name two columns of numbers with --x and --y, or a column of points with --geometry"}
+		}
+	}
+	if refusal != nil && geometry != "" {
+		return Pair{}, refusal
+	}
+	pair, err := Resolve(x, y, geometry, fields)
+	if err != nil && refusal != nil {
+		return Pair{}, refusal
+	}
+	return pair, err
 }
 
 func resolveGeometry(geometry string, fields []Field) (Pair, error) {
@@ -91,7 +136,7 @@ func resolveGeometry(geometry string, fields []Field) (Pair, error) {
 	if e1, e2 := CheckNumeric(gx, fields), CheckNumeric(gy, fields); e1 != nil || e2 != nil {
 		return Pair{}, setting(fmt.Sprintf("no point column %q", geometry), near(geometry, fields))
 	}
-	return Pair{X: gx, Y: gy}, nil
+	return Pair{X: gx, Y: gy, Geometry: geometry}, nil
 }
 
 func resolveUnnamed(fields []Field) (Pair, error) {

@@ -108,6 +108,8 @@ func goodWeightedRun(x, y, w []float64, x0, x1, y0, y1, nowhere float64) int {
 // judge names the first reason against a row known to be bad.
 func (s Screen) judge(x, y, w float64) Reason {
 	switch {
+	case IsOtherShape(x) || IsOtherShape(y):
+		return NotAPoint
 	case IsNull(x) || IsNull(y):
 		return NullCoordinate
 	case IsNotAValue(x) || IsNotAValue(y) || s.Weighted && IsNotAValue(w):

@@ -12,11 +12,19 @@ import (
 // Meta is what the release does not know about itself. The zero value writes 7
 // decimals, no weights and the default unit.
 type Meta struct {
-	Weighted bool   // the run has weights: regions carry weight
-	Decimals int    // of positions, 1 to 7; 0 means 7
-	Unit     string // of intensities; "" means "events per km2"
-	Caution  string // one sentence that travels in the file; "" for none
-	sequence bool   // a text sequence instead of one collection
+	Weighted bool    // the run has weights: regions carry weight
+	Decimals int     // of positions, 1 to 7; 0 means 7
+	Unit     string  // of intensities; "" means "events per km2"
+	Caution  string  // one sentence that travels in the file; "" for none
+	Years    float64 // the events' period; above 0 intensities are given per year too
+	sequence bool    // a text sequence instead of one collection
+}
+
+// yearly writes an intensity per year, where the period is known.
+func (m Meta) yearly(e *encoder, name string, perKM2 float64) {
+	if m.Years > 0 {
+		e.number(name+"_per_km2_year", perKM2/m.Years)
+	}
 }
 
 // WriteRegions writes regions.geojson: a MultiPolygon per highest density
@@ -74,6 +82,7 @@ func writeRegions(w io.Writer, regions []spatial.Region, s setting, meta Meta) e
 		}
 		e.number("mass", r.Mass)
 		e.number("mean_per_km2", r.MeanPerKM2)
+		meta.yearly(e, "mean", r.MeanPerKM2)
 	})
 }
 
@@ -91,6 +100,8 @@ func writeContours(w io.Writer, bands []spatial.Band, s setting, meta Meta) erro
 		b := &bands[i]
 		e.number("from_per_km2", b.FromPerKM2)
 		e.number("to_per_km2", b.ToPerKM2)
+		meta.yearly(e, "from", b.FromPerKM2)
+		meta.yearly(e, "to", b.ToPerKM2)
 		e.number("area_km2", b.AreaKM2)
 		e.count(b.Events)
 	})
@@ -113,6 +124,8 @@ func writePeaks(w io.Writer, peaks []spatial.Peak, s setting, meta Meta) error {
 		e.number("standard_error_per_km2", p.StandardErrorPerKM2)
 		e.number("smoothing_bias_per_km2", p.SmoothingBiasPerKM2)
 		e.number("debiased_per_km2", p.DebiasedPerKM2)
+		meta.yearly(e, "intensity", p.IntensityPerKM2)
+		meta.yearly(e, "standard_error", p.StandardErrorPerKM2)
 		if p.Region > 0 {
 			e.exact("region", p.Region)
 		} else {

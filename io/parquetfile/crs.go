@@ -4,15 +4,18 @@ import (
 	"encoding/json"
 	"fmt"
 	"strings"
+
+	"drumlin/io/events"
 )
 
 // Geometry is a geometry column that the file declares, by the format's own
 // logical type or in the "geo" entry of the file's metadata.
 type Geometry struct {
-	Name     string // column or group
-	Encoding string // "WKB", "point", ... as declared
-	CRS      string // as in events.Info
-	Primary  bool   // the file calls it its main geometry
+	Name     string   // column or group
+	Encoding string   // "WKB", "point", ... as declared
+	CRS      string   // as in events.Info
+	Primary  bool     // the file calls it its main geometry, or it is the only one
+	Types    []string // geometry types the file declares, as "Point Z"; nil if unknown
 }
 
 // lonLat is what both conventions mean by an absent CRS.
@@ -21,6 +24,21 @@ const lonLat = "OGC:CRS84"
 // Geometries lists the declared geometry columns in file order, those of the
 // "geo" entry first.
 func (f *File) Geometries() []Geometry { return append([]Geometry(nil), f.geoms...) }
+
+// geometries describes them for Info: read here are only points stored as two
+// columns of numbers; package geoparquet reads more.
+func (f *File) geometries() []events.Geometry {
+	var out []events.Geometry
+	for _, g := range f.geoms {
+		e := events.Geometry{Name: g.Name, Type: g.Encoding, CRS: g.CRS, Primary: g.Primary}
+		x, y := f.leafAt(g.Name+".x"), f.leafAt(g.Name+".y")
+		if x < 0 || y < 0 || !f.leaves[x].numeric() || !f.leaves[y].numeric() {
+			e.Refusal = "is " + g.Encoding + ", not points of two numbers"
+		}
+		out = append(out, e)
+	}
+	return out
+}
 
 // KeyValue returns an entry of the file's own metadata.
 func (f *File) KeyValue(key string) (string, bool) {
@@ -40,6 +58,7 @@ func (f *File) describeGeometry() {
 			Columns map[string]struct {
 				Encoding string          `json:"encoding"`
 				CRS      json.RawMessage `json:"crs"`
+				Types    []string        `json:"geometry_types"`
 			} `json:"columns"`
 		}
 		if json.Unmarshal([]byte(text), &geo) == nil {
@@ -49,7 +68,7 @@ func (f *File) describeGeometry() {
 					continue
 				}
 				seen[name] = true
-				g := Geometry{Name: name, Encoding: col.Encoding, CRS: projJSON(col.CRS), Primary: name == geo.Primary}
+				g := Geometry{Name: name, Encoding: col.Encoding, CRS: projJSON(col.CRS), Primary: name == geo.Primary, Types: col.Types}
 				f.geoms = append(f.geoms, g)
 			}
 		}
@@ -60,7 +79,13 @@ func (f *File) describeGeometry() {
 		}
 		f.geoms = append(f.geoms, Geometry{Name: l.name, Encoding: "WKB", CRS: f.nativeCRS(l.lost.crs)})
 	}
+	if len(f.geoms) == 1 {
+		f.geoms[0].Primary = true
+	}
 	for i, g := range f.geoms {
+		if at := f.leafAt(g.Name); at >= 0 && f.leaves[at].kind == kindCode {
+			f.leaves[at].class = events.Plain
+		}
 		if i == 0 || g.Primary {
 			f.crs = g.CRS
 		}

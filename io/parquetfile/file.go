@@ -1,7 +1,6 @@
 package parquetfile
 
 import (
-	"encoding/binary"
 	"errors"
 	"fmt"
 	"io/fs"
@@ -9,7 +8,6 @@ import (
 	"os"
 	"time"
 
-	"github.com/apache/arrow/go/v17/parquet"
 	"github.com/apache/arrow/go/v17/parquet/metadata"
 
 	"drumlin/io/events"
@@ -131,14 +129,14 @@ func (f *File) fault(where string, cause error) error {
 
 // Info describes the file.
 func (f *File) Info() events.Info {
-	return events.Info{Name: f.path, Format: events.FormatParquet, Bytes: f.size, Rows: f.rows, CRS: f.crs}
+	return events.Info{Name: f.path, Format: events.FormatParquet, Bytes: f.size, Rows: f.rows, CRS: f.crs, Geometries: f.geometries()}
 }
 
 // Fields lists the leaf columns in file order, by dotted path.
 func (f *File) Fields() []events.Field {
 	out := make([]events.Field, len(f.leaves))
 	for i, l := range f.leaves {
-		out[i] = events.Field{Name: l.name, Type: l.typ, Numeric: l.kind != kindNone}
+		out[i] = events.Field{Name: l.name, Type: l.typ, Numeric: l.numeric(), Class: l.class}
 	}
 	return out
 }
@@ -156,71 +154,3 @@ func (f *File) PartRows(part int) int64 {
 
 // Close does nothing: no handle is held between calls.
 func (f *File) Close() error { return nil }
-
-// Bounds returns the least and greatest value of a column by the statistics of
-// all row groups. Only signed integers and floats count; a row group without
-// statistics, or with a NaN among them, makes the answer unknown. The
-// statistics are the writer's word and are not checked against the rows.
-func (f *File) Bounds(name string) (lo, hi float64, ok bool) {
-	at := -1
-	for i, l := range f.leaves {
-		if l.name == name {
-			if at >= 0 {
-				return 0, 0, false
-			}
-			at = i
-		}
-	}
-	if at < 0 {
-		return 0, 0, false
-	}
-	l := &f.leaves[at]
-	if l.pow != 0 || l.kind != kindF64 && l.kind != kindF32 && l.kind != kindI32 && l.kind != kindI64 {
-		return 0, 0, false
-	}
-	lo, hi = math.Inf(1), math.Inf(-1)
-	for _, rg := range f.meta.RowGroups {
-		if rg.NumRows == 0 {
-			continue
-		}
-		if at >= len(rg.Columns) || rg.Columns[at] == nil || rg.Columns[at].MetaData == nil {
-			return 0, 0, false
-		}
-		m := rg.Columns[at].MetaData
-		if m.Statistics == nil || parquet.Type(m.Type) != l.phys {
-			return 0, 0, false
-		}
-		st := m.Statistics
-		if st.NullCount != nil && *st.NullCount == m.NumValues {
-			continue
-		}
-		bmin, bmax := st.MinValue, st.MaxValue
-		if bmin == nil && bmax == nil {
-			bmin, bmax = st.Min, st.Max
-		}
-		if len(bmin) != l.width || len(bmax) != l.width {
-			return 0, 0, false
-		}
-		a, b := l.statistic(bmin), l.statistic(bmax)
-		if !(a <= b) {
-			return 0, 0, false
-		}
-		lo, hi = min(lo, a), max(hi, b)
-	}
-	if !(lo <= hi) {
-		return 0, 0, false
-	}
-	return lo, hi, true
-}
-
-func (l *leaf) statistic(b []byte) float64 {
-	switch l.kind {
-	case kindF64:
-		return math.Float64frombits(binary.LittleEndian.Uint64(b))
-	case kindF32:
-		return float64(math.Float32frombits(binary.LittleEndian.Uint32(b)))
-	case kindI32:
-		return float64(int32(binary.LittleEndian.Uint32(b)))
-	}
-	return float64(int64(binary.LittleEndian.Uint64(b)))
-}

@@ -1,12 +1,15 @@
 package parquetfile
 
 import (
+	"encoding/binary"
 	"fmt"
 	"math"
 	"math/big"
 
 	"github.com/apache/arrow/go/v17/parquet"
 	"github.com/apache/arrow/go/v17/parquet/schema"
+
+	"drumlin/io/events"
 )
 
 // kind says how stored values become float64.
@@ -23,6 +26,18 @@ const (
 	kindU64
 	kindBool
 	kindBig // two's complement, highest byte first: decimals as bytes
+
+	kindCode   // byte strings, by way of a Coder
+	kindDate   // 32-bit days since 1970
+	kindMillis // 64-bit, since 1970
+	kindMicros
+	kindNanos
+	kindI96 // nanoseconds of a day and a Julian day number
+)
+
+const (
+	microsPerDay = 86400e6
+	julian1970   = 2440588 // Julian day number of 1970-01-01
 )
 
 // leaf is one column of values.
@@ -30,6 +45,7 @@ type leaf struct {
 	name   string // dotted path
 	typ    string // for messages
 	kind   kind
+	class  events.Class
 	phys   parquet.Type
 	width  int     // bytes of a plain value, 0 where it varies, -1 for bits
 	digits int     // decimal digits after the point
@@ -54,7 +70,14 @@ func newLeaf(c *schema.Column, lost dropped) leaf {
 	case parquet.Types.Float:
 		l.kind, l.width = kindF32, 4
 	case parquet.Types.Boolean:
-		l.kind, l.width = kindBool, -1
+		l.kind, l.width, l.class = kindBool, -1, events.Truth
+	case parquet.Types.Int96:
+		l.kind, l.width, l.class = kindI96, 12, events.Instant
+	case parquet.Types.ByteArray:
+		l.kind = kindCode
+		if lost.id == 0 {
+			l.class = events.Text
+		}
 	case parquet.Types.Int32:
 		l.kind, l.width = kindI32, 4
 	case parquet.Types.Int64:
@@ -78,15 +101,73 @@ func newLeaf(c *schema.Column, lost dropped) leaf {
 		if l.width == 2 && l.phys == parquet.Types.FixedLenByteArray {
 			l.kind = kindF16
 		}
-	case schema.DateLogicalType, schema.TimeLogicalType, schema.TimestampLogicalType,
-		*schema.DateLogicalType, *schema.TimeLogicalType, *schema.TimestampLogicalType:
+	case schema.DateLogicalType, *schema.DateLogicalType:
+		l.kind, l.class = kindDate, events.WallClock
+	case schema.TimestampLogicalType:
+		l.timestamp(t.IsAdjustedToUTC(), t.TimeUnit())
+	case *schema.TimestampLogicalType:
+		l.timestamp(t.IsAdjustedToUTC(), t.TimeUnit())
+	case schema.TimeLogicalType, *schema.TimeLogicalType:
 		l.kind = kindNone
+	case schema.BSONLogicalType, *schema.BSONLogicalType:
+		l.class = events.Plain
 	}
 	if c.MaxRepetitionLevel() > 0 {
-		l.kind = kindNone
+		l.kind, l.class = kindNone, events.Plain
 		l.typ = "repeated " + l.typ
 	}
 	return l
+}
+
+func (l *leaf) timestamp(utc bool, unit schema.TimeUnitType) {
+	l.class = events.WallClock
+	if utc {
+		l.class = events.Instant
+	}
+	switch unit {
+	case schema.TimeUnitMillis:
+		l.kind = kindMillis
+	case schema.TimeUnitMicros:
+		l.kind = kindMicros
+	case schema.TimeUnitNanos:
+		l.kind = kindNanos
+	default:
+		l.kind, l.class = kindNone, events.Plain
+	}
+}
+
+// numeric reports whether the values are numbers, not times or codes.
+func (l *leaf) numeric() bool { return l.kind != kindNone && l.kind < kindCode }
+
+// readable reports whether Read yields the column without a Coder of its own.
+func (l *leaf) readable() bool { return l.numeric() || l.class != events.Plain }
+
+// integral turns a stored integer of the column into its value.
+func (l *leaf) integral(n int64) float64 {
+	switch l.kind {
+	case kindU32:
+		return float64(uint32(n))
+	case kindU64:
+		return float64(uint64(n))
+	case kindDate:
+		return float64(n) * microsPerDay
+	case kindMillis:
+		return float64(n) * 1000
+	case kindNanos:
+		q := n / 1000
+		if n%1000 < 0 {
+			q--
+		}
+		return float64(q)
+	}
+	return float64(n)
+}
+
+// i96Value reads a time of 12 bytes.
+func i96Value(b []byte) float64 {
+	nanos := int64(binary.LittleEndian.Uint64(b))
+	day := int64(int32(binary.LittleEndian.Uint32(b[8:])))
+	return float64(day-julian1970)*microsPerDay + math.Floor(float64(nanos)/1000)
 }
 
 func (l *leaf) decimal(t schema.LogicalType) {
@@ -95,9 +176,10 @@ func (l *leaf) decimal(t schema.LogicalType) {
 		Scale() int32
 	})
 	if !ok || d.Scale() < 0 || d.Scale() > 1000 {
-		l.kind = kindNone
+		l.kind, l.class = kindNone, events.Plain
 		return
 	}
+	l.class = events.Plain
 	switch l.phys {
 	case parquet.Types.ByteArray:
 		l.kind = kindBig

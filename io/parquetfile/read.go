@@ -38,7 +38,7 @@ func (w *workspace) prepare(cols, rows int) {
 func (w *workspace) release() {
 	for _, c := range w.cols {
 		c.pages.release()
-		c.leaf, c.vals.leaf, c.vals.src, c.vals.strs.src = nil, nil, nil, nil
+		c.leaf, c.vals.leaf, c.vals.src, c.vals.strs.src, c.vals.code = nil, nil, nil, nil, nil
 		c.levels.b, c.vals.runs.b, c.vals.del = nil, nil, delta{}
 		if cap(c.vals.dict) > keepBytes/8 {
 			c.vals.dict = nil
@@ -51,10 +51,17 @@ func (w *workspace) release() {
 // file anew, so that parts can be read at the same time. The context is looked
 // at before every batch and its error is returned unwrapped. Other errors are
 // *events.Fault: ErrSetting for a column that is not there or there twice,
-// ErrUnsupported for one that holds no numbers or whose bytes are encrypted,
+// ErrUnsupported for one that is not read or whose bytes are encrypted,
 // packed in a codec that is not read, or above a limit, ErrMalformed for broken
 // bytes and for a count of rows other than the row group states.
 func (f *File) Read(ctx context.Context, part int, columns []string, yield func(events.Batch) error) error {
+	return f.ReadCoded(ctx, part, columns, nil, yield)
+}
+
+// ReadCoded is Read with coders for columns of byte strings: codes[k], where
+// not nil, makes the numbers of column k, which may then be binary. A text
+// column without one comes with the words of its numbers.
+func (f *File) ReadCoded(ctx context.Context, part int, columns []string, codes []Coder, yield func(events.Batch) error) error {
 	if part < 0 || part >= f.Parts() {
 		return &events.Fault{Kind: events.ErrSetting, File: f.path, What: fmt.Sprintf("no row group %d among %d", part, f.Parts())}
 	}
@@ -67,8 +74,12 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 	at := make([]int, len(columns))
 	fields := f.Fields()
 	for k, name := range columns {
-		if err := events.CheckNumeric(name, fields); err != nil {
-			return f.fault("", err)
+		check := events.CheckReadable(name, fields)
+		if k < len(codes) && codes[k] != nil {
+			_, check = events.FindField(name, fields)
+		}
+		if check != nil {
+			return f.fault("", check)
 		}
 		for i := range f.leaves {
 			if f.leaves[i].name == name {
@@ -90,10 +101,11 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 	defer w.release()
 	size := int(min(int64(f.opt.BatchRows), rows))
 	w.prepare(len(columns), size)
+	codes, listed := f.coders(at, codes)
 	where := make([]string, len(columns))
 	for k, i := range at {
 		where[k] = fmt.Sprintf("row group %d, column %s", part, columns[k])
-		err := f.guard(where[k], func() error { return f.openChunk(w.cols[k], h, part, i, &w.unpack) })
+		err := f.guard(where[k], func() error { return f.openChunk(w.cols[k], h, part, i, codes[k], &w.unpack) })
 		if err != nil {
 			return err
 		}
@@ -105,6 +117,9 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 		n := int(min(int64(size), rows-done))
 		for k := range columns {
 			dst := w.batch[k][:n]
+			if codes[k] != nil {
+				codes[k].Next()
+			}
 			if err := f.guard(where[k], func() error { return w.cols[k].read(dst) }); err != nil {
 				return err
 			}
@@ -118,11 +133,34 @@ func (f *File) Read(ctx context.Context, part int, columns []string, yield func(
 				}
 			}
 		}
-		if err := yield(events.Batch{Columns: w.views}); err != nil {
+		b := events.Batch{Columns: w.views}
+		if listed {
+			b.Words = make([][]string, len(columns))
+			for k := range columns {
+				if own, ok := codes[k].(*events.Words); ok {
+					b.Words[k] = own.List()
+				}
+			}
+		}
+		if err := yield(b); err != nil {
 			return err
 		}
 	}
 	return nil
+}
+
+// coders completes the coders: one of words for each text column without one.
+func (f *File) coders(at []int, given []Coder) (codes []Coder, listed bool) {
+	codes = make([]Coder, len(at))
+	copy(codes, given)
+	for k, i := range at {
+		if f.leaves[i].kind == kindCode && codes[k] == nil {
+			codes[k], listed = new(events.Words), true
+		} else if f.leaves[i].kind != kindCode {
+			codes[k] = nil
+		}
+	}
+	return codes, listed
 }
 
 // reopen opens the file and makes sure that it is still the one described.
@@ -141,7 +179,7 @@ func (f *File) reopen() (*os.File, error) {
 }
 
 // openChunk points a column at a chunk after checking its metadata.
-func (f *File) openChunk(c *column, h *os.File, part, i int, u *unpacker) error {
+func (f *File) openChunk(c *column, h *os.File, part, i int, code Coder, u *unpacker) error {
 	rg := f.meta.RowGroups[part]
 	l := &f.leaves[i]
 	if len(rg.Columns) != len(f.leaves) || rg.Columns[i] == nil {
@@ -187,6 +225,7 @@ func (f *File) openChunk(c *column, h *os.File, part, i int, u *unpacker) error 
 	}
 	c.leaf, c.rows, c.left, c.hasDict = l, rg.NumRows, 0, false
 	c.vals.leaf, c.vals.dict = l, c.vals.dict[:0]
+	c.vals.code = code
 	c.pages.reset(h, start, end, int32(m.Codec), f.opt.MaxPageBytes, u)
 	return nil
 }

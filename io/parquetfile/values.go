@@ -19,6 +19,7 @@ var (
 // values decodes the non-null values of one page, lazily and in order.
 type values struct {
 	leaf *leaf
+	code Coder // of byte strings
 	enc  int32
 	src  []byte
 	pos  int // bytes, bits or values of src consumed, by encoding
@@ -88,7 +89,11 @@ func (v *values) start(enc int32, src []byte, rows int) error {
 }
 
 func (l *leaf) integer() bool {
-	return l.kind == kindI32 || l.kind == kindI64 || l.kind == kindU32 || l.kind == kindU64
+	switch l.kind {
+	case kindI32, kindI64, kindU32, kindU64, kindDate, kindMillis, kindMicros, kindNanos:
+		return true
+	}
+	return false
 }
 
 // read fills dst with the next values.
@@ -116,9 +121,12 @@ func (v *values) read(dst []float64) error {
 			if v.leaf.width > 0 && len(b) != v.leaf.width {
 				return errValues
 			}
-			if v.leaf.kind == kindBig {
+			switch v.leaf.kind {
+			case kindCode:
+				dst[i] = v.code.Code(b)
+			case kindBig:
 				dst[i] = v.leaf.bigValue(b)
-			} else {
+			default:
 				v.leaf.plain(dst[i:i+1], b)
 			}
 		}
@@ -136,14 +144,7 @@ func (v *values) read(dst []float64) error {
 			return err
 		}
 		for i, n := range v.ints {
-			switch v.leaf.kind {
-			case kindU32:
-				dst[i] = float64(uint32(n))
-			case kindU64:
-				dst[i] = float64(uint64(n))
-			default:
-				dst[i] = float64(n)
-			}
+			dst[i] = v.leaf.integral(n)
 		}
 		v.leaf.scale(dst)
 	}
@@ -186,8 +187,13 @@ func (v *values) readPlain(dst []float64) error {
 		if uint64(n) > uint64(len(v.src)-v.pos) {
 			return errValues
 		}
-		dst[i] = l.bigValue(v.src[v.pos : v.pos+int(n)])
+		b := v.src[v.pos : v.pos+int(n)]
 		v.pos += int(n)
+		if l.kind == kindCode {
+			dst[i] = v.code.Code(b)
+		} else {
+			dst[i] = l.bigValue(b)
+		}
 	}
 	return nil
 }
@@ -227,6 +233,21 @@ func (l *leaf) plain(dst []float64, src []byte) {
 	case kindBig:
 		for i := range dst {
 			dst[i] = l.bigValue(src[i*l.width : (i+1)*l.width])
+		}
+		return
+	case kindI96:
+		for i := range dst {
+			dst[i] = i96Value(src[12*i:])
+		}
+		return
+	case kindDate:
+		for i := range dst {
+			dst[i] = l.integral(int64(int32(binary.LittleEndian.Uint32(src[4*i:]))))
+		}
+		return
+	case kindMillis, kindMicros, kindNanos:
+		for i := range dst {
+			dst[i] = l.integral(int64(binary.LittleEndian.Uint64(src[8*i:])))
 		}
 		return
 	}
@@ -275,7 +296,11 @@ func (v *values) setDict(n int, data []byte) error {
 	}
 	v.dict = scratch(v.dict, n)
 	v.enc, v.src, v.pos = encPlain, data, 0
-	return v.read(v.dict)
+	if err := v.read(v.dict); err != nil || v.code == nil {
+		return err
+	}
+	v.code.Keep()
+	return nil
 }
 
 func (v *values) readDict(dst []float64) error {

@@ -19,6 +19,7 @@ type Record struct {
 	Program     Program       `json:"program"`
 	Settings    Settings      `json:"settings"`
 	Rows        Rows          `json:"rows"`
+	Period      *Period       `json:"period,omitempty"` // nil without a column of times
 	CRS         CRS           `json:"crs"`
 	Tally       Tally         `json:"tally"`
 	Lattice     Lattice       `json:"lattice"`
@@ -74,6 +75,18 @@ type Rows struct {
 type SetAside struct {
 	Reason string `json:"reason"`
 	Rows   int64  `json:"rows"`
+}
+
+// Period says what time the events used are from. Times carry the offset of
+// the zone.
+type Period struct {
+	Column string  `json:"column"`
+	Zone   string  `json:"zone"`            // of times without an offset
+	From   string  `json:"from,omitempty"`  // start of the window asked for, part of it
+	Until  string  `json:"until,omitempty"` // its end, not part of it
+	First  string  `json:"first"`           // earliest event
+	Last   string  `json:"last"`            // latest
+	Years  float64 `json:"years"`           // length of the window, from the first or to the last event where it is open
 }
 
 // CRS says where the numbers stand on the ground.

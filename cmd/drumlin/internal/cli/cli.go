@@ -131,12 +131,14 @@ func (a *app) root() *cobra.Command {
 	root := &cobra.Command{
 		Use:   "drumlin",
 		Short: "Map where recorded events concentrate, with a bandwidth that can be defended",
-		Long: `drumlin reads event extracts (Parquet or CSV files with one row per event),
+		Long: `drumlin reads event extracts (Parquet, GeoParquet or CSV files with one row per
+event),
 estimates how densely events lie in the plane with a full bandwidth matrix
 chosen from the data, and writes polygons: regions that hold a stated share of
 events, bands of equal intensity, and peaks with their standard error and the
 amount by which smoothing lowers them.`,
 		Example: `  drumlin demo --out demo
+  drumlin survey callouts.parquet
   drumlin map callouts.parquet --out map
   drumlin map 'extracts/*.parquet' --x long --y lat --crs EPSG:4326 --out map`,
 		SilenceUsage: true, SilenceErrors: true,
@@ -146,7 +148,7 @@ amount by which smoothing lowers them.`,
 		return fmt.Errorf("%w: %w; see drumlin %s --help", errUsage, err, c.Name())
 	})
 	root.SetHelpTemplate(root.HelpTemplate() + exitHelp)
-	root.AddCommand(a.mapCommand(), a.bandwidthCommand(), a.evaluateCommand(), a.demoCommand(), a.versionCommand())
+	root.AddCommand(a.mapCommand(), a.surveyCommand(), a.bandwidthCommand(), a.evaluateCommand(), a.demoCommand(), a.versionCommand())
 	for _, c := range root.Commands() {
 		c.Args = usageArgs(c.Args)
 	}

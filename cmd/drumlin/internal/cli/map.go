@@ -28,10 +28,14 @@ func (a *app) mapCommand() *cobra.Command {
   report.html       one page for planners and reviewers
   run.json          what was run, on what, and how it was decided
 
-An input is a Parquet or CSV file, a folder of them, or a quoted glob; the format
-is told from the content. Several inputs make one set of events.`,
+An input is a Parquet, GeoParquet or CSV file, plain or packed by gzip or zstd, a
+folder of them, a quoted glob, or - for standard input; the format is told from
+the content. Folders called key=value become columns. Several inputs make one
+set of events.`,
 		Example: `  drumlin map callouts.parquet --out map
   drumlin map 2025.csv 2026.csv --x easting --y northing --crs EPSG:3035 --out map
+  drumlin map calls/ --where "kind = 'fire' AND year >= 2024" --out fires
+  drumlin map calls.csv.gz --time received --from 2025-01-01 --until 2026-01-01 --zone Europe/Oslo --out map
   DRUMLIN_MIN_EVENTS=20 drumlin map callouts.parquet --content 50,90 --out map`,
 		Args: cobra.ArbitraryArgs,
 		RunE: func(c *cobra.Command, args []string) error {

@@ -20,11 +20,7 @@ type BandwidthSettings struct {
 
 // BandwidthFlags declares the flags of the command bandwidth.
 func BandwidthFlags(f *pflag.FlagSet) {
-	f.String("x", "", "column of the longitude or easting; default: an unambiguous name such as lon or x")
-	f.String("y", "", "column of the latitude or northing")
-	f.String("crs", "", "CRS of the coordinates: EPSG:n, or plane for metres without a place; default: degrees if the names say so")
-	f.String("work-crs", "auto", "plane of the estimate: auto (equal-area, centred on the events) or EPSG:n")
-	f.String("weight", "", "column of weights, above 0")
+	InputFlags(f)
 	f.String("bandwidth", "all", "which selectors to run: all, or one of "+strings.Join(BandwidthNames, ", "))
 	f.String("shape", "full", "form of the bandwidth matrix: full, diagonal, scalar")
 	f.Int("stability", 0, "bootstrap replicates behind intervals for the default's ellipse; 0: none")

@@ -18,13 +18,33 @@ import (
 // EnvPrefix stands before the upper-case name of a setting in the environment.
 const EnvPrefix = "DRUMLIN"
 
-// MapFlags declares the flags of map with their defaults.
-func MapFlags(f *pflag.FlagSet) {
-	f.String("x", "", "column of the longitude or easting; default: an unambiguous name such as lon or x")
+// InputFlags declares the flags that say which columns and rows are read.
+func InputFlags(f *pflag.FlagSet) {
+	f.String("x", "", "column of the longitude or easting; default: the geometry column, else an unambiguous name such as lon or x")
 	f.String("y", "", "column of the latitude or northing")
 	f.String("crs", "", "CRS of the coordinates: EPSG:n, or plane for metres without a place; default: degrees if the names say so")
-	f.String("work-crs", "auto", "plane of the estimate: auto (equal-area, centred on the events) or EPSG:n")
+	f.String("geometry", "", "column of points in a GeoParquet file")
 	f.String("weight", "", "column of weights, above 0")
+	f.String("where", "", "row filter in CQL2 text, such as \"kind = 'fire' AND severity >= 2\"")
+	f.String("time", "", "column of times")
+	f.String("from", "", "start of the time window, such as 2025-01-01")
+	f.String("until", "", "end of the time window, not part of it")
+	f.String("zone", "UTC", "time zone of times without an offset, such as Europe/Berlin")
+	f.String("work-crs", "auto", "plane of the estimate: auto (equal-area, centred on the events) or EPSG:n")
+}
+
+// SurveyFlags declares the flags of survey with their defaults.
+func SurveyFlags(f *pflag.FlagSet) {
+	InputFlags(f)
+	f.Bool("places", false, "say where the tallest stacks of events stand; they may point at people")
+	f.Int("workers", 0, "goroutines that work; 0: all CPUs")
+	f.Bool("json", false, "the result as JSON, messages as JSON lines")
+	f.Bool("quiet", false, "no progress")
+}
+
+// MapFlags declares the flags of map with their defaults.
+func MapFlags(f *pflag.FlagSet) {
+	InputFlags(f)
 	f.String("bandwidth", BandwidthNames[0], "how the bandwidth matrix is chosen: "+strings.Join(BandwidthNames, ", "))
 	f.String("shape", "full", "form of the bandwidth matrix: full, diagonal, scalar")
 	f.String("matrix", "", "a fixed bandwidth matrix h11,h12,h22 in square metres")

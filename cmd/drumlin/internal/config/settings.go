@@ -14,11 +14,18 @@ import (
 type Settings struct {
 	Inputs []string `mapstructure:"inputs"` // files, folders, quoted globs
 
-	X       string `mapstructure:"x"`
-	Y       string `mapstructure:"y"`
-	CRS     string `mapstructure:"crs"`
-	WorkCRS string `mapstructure:"work-crs"`
-	Weight  string `mapstructure:"weight"`
+	X        string `mapstructure:"x"`
+	Y        string `mapstructure:"y"`
+	Geometry string `mapstructure:"geometry"`
+	CRS      string `mapstructure:"crs"`
+	WorkCRS  string `mapstructure:"work-crs"`
+	Weight   string `mapstructure:"weight"`
+
+	Where string `mapstructure:"where"` // row filter
+	Time  string `mapstructure:"time"`  // column of times
+	From  string `mapstructure:"from"`  // start of the time window
+	Until string `mapstructure:"until"` // its end, not part of it
+	Zone  string `mapstructure:"zone"`
 
 	Bandwidth string    `mapstructure:"bandwidth"`
 	Shape     string    `mapstructure:"shape"`
@@ -49,6 +56,7 @@ type Settings struct {
 	Formats []string `mapstructure:"formats"`
 	JSON    bool     `mapstructure:"json"`
 	Quiet   bool     `mapstructure:"quiet"`
+	Places  bool     `mapstructure:"places"` // of survey: say where the tallest stacks are
 }
 
 // ErrSettings marks settings that cannot be used.
@@ -89,9 +97,7 @@ func (s *Settings) Validate() error {
 	if s.Out == "" {
 		bad("out is missing; name the folder to write, for example --out map")
 	}
-	if (s.X == "") != (s.Y == "") {
-		bad("only one of x and y is given; name both columns")
-	}
+	s.checkRows(bad)
 	oneOf("bandwidth", s.Bandwidth, BandwidthNames...)
 	oneOf("shape", s.Shape, "full", "diagonal", "scalar")
 	oneOf("region-rule", s.RegionRule, "events", "mass")
@@ -167,4 +173,34 @@ func (s *Settings) Validate() error {
 		text[i] = e.Error()
 	}
 	return fmt.Errorf("%w: %s", ErrSettings, strings.Join(text, "; "))
+}
+
+// checkRows looks at what chooses columns and rows.
+func (s *Settings) checkRows(bad func(string, ...any)) {
+	if (s.X == "") != (s.Y == "") {
+		bad("only one of x and y is given; name both columns")
+	}
+	if s.Geometry != "" && (s.X != "" || s.Y != "") {
+		bad("geometry and x, y are both given; give one")
+	}
+	if s.Time == "" && (s.From != "" || s.Until != "") {
+		bad("from and until need the column of times; name it with time")
+	}
+}
+
+// ValidateInput is Validate for commands that only read.
+func (s *Settings) ValidateInput() error {
+	var f []string
+	bad := func(format string, a ...any) { f = append(f, fmt.Sprintf(format, a...)) }
+	if len(s.Inputs) == 0 {
+		bad("no input; name one or more files")
+	}
+	s.checkRows(bad)
+	if s.Workers < 0 || s.Workers > 1024 {
+		bad("workers is %d; give 0 (all CPUs) to 1024", s.Workers)
+	}
+	if len(f) == 0 {
+		return nil
+	}
+	return fmt.Errorf("%w: %s", ErrSettings, strings.Join(f, "; "))
 }

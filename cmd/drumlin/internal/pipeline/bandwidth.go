@@ -80,7 +80,7 @@ func Bandwidths(ctx context.Context, s *config.BandwidthSettings, report *progre
 		r.workers = runtime.GOMAXPROCS(0)
 	}
 	var err error
-	if r.sources, err = openAll(s.Inputs); err != nil {
+	if r.sources, err = openAll(ctx, s.Inputs); err != nil {
 		return nil, err
 	}
 	defer closeAll(r.sources)

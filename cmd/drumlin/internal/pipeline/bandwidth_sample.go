@@ -20,9 +20,10 @@ func (r *reading) drawSample(ctx context.Context, sources []events.Source, w *po
 		states[i].most = most
 	}
 	screen := r.screen()
-	err := w.each(ctx, sources, r.columns(), func(worker, _ int, b events.Batch) error {
-		var account events.Account
-		n := screen.Apply(b, &account)
+	accounts := make([]events.Account, len(states)) // counted before, when the tally was made
+	account := func(worker int) (*events.Account, []int64) { return &accounts[worker], nil }
+	_, err := r.rows(ctx, sources, w, r.columns(), account, func(worker, _ int, b events.Batch, _ *picker) error {
+		n := screen.Apply(b, &accounts[worker])
 		weights := []float64(nil)
 		if screen.Weighted {
 			weights = b.Columns[2][:n]

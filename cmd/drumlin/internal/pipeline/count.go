@@ -10,6 +10,7 @@ import (
 
 	"drumlin/cmd/drumlin/internal/progress"
 	"drumlin/io/events"
+	"drumlin/io/record"
 	"drumlin/mv"
 	"drumlin/spatial"
 )
@@ -32,8 +33,9 @@ type part struct {
 
 // each reads the columns of every part, split over the workers. visit gets the
 // worker's number, so that it can keep state of its own without locks. The
-// first error by part order wins, so the same fault is reported every time.
-func (w *pool) each(ctx context.Context, sources []events.Source, columns []string, visit func(worker, file int, b events.Batch) error) error {
+// first error by part order wins, so the same fault is reported every time. skip,
+// if not nil, returns the rows of a part that need not be read.
+func (w *pool) each(ctx context.Context, sources []events.Source, columns []string, skip func(worker int, p part) int64, visit func(worker, file int, b events.Batch) error) error {
 	var parts []part
 	for i, s := range sources {
 		for k := range s.Parts() {
@@ -53,6 +55,12 @@ func (w *pool) each(ctx context.Context, sources []events.Source, columns []stri
 					return
 				}
 				p := parts[i]
+				if skip != nil {
+					if n := skip(worker, p); n > 0 {
+						w.report.Rows(n)
+						continue
+					}
+				}
 				err := p.source.Read(ctx, p.index, columns, func(b events.Batch) error {
 					w.report.Rows(int64(b.Len()))
 					return visit(worker, p.file, b)
@@ -88,8 +96,12 @@ func (e *extent) add(axis int, lo, hi float64) {
 }
 
 // stated is the extent from the files' own statistics, false where one lacks them.
+// They are those of all rows, and unknown where only some are looked at.
 func (r *reading) stated(sources []events.Source) (extent, bool) {
 	e := noExtent()
+	if r.pick != nil {
+		return e, false
+	}
 	for _, src := range sources {
 		for axis, c := range []string{r.x, r.y} {
 			lo, hi, ok := src.Bounds(c)
@@ -119,7 +131,8 @@ func (r *reading) look(ctx context.Context, sources []events.Source, w *pool, ce
 	}
 	screen := r.screen()
 	screen.Weighted = false
-	err := w.each(ctx, sources, []string{r.x, r.y}, func(worker, _ int, b events.Batch) error {
+	account := func(worker int) (*events.Account, []int64) { return &looks[worker].account, nil }
+	_, err := r.rows(ctx, sources, w, []string{r.x, r.y}, account, func(worker, _ int, b events.Batch, _ *picker) error {
 		l := &looks[worker]
 		for axis := range 2 {
 			for _, v := range b.Columns[axis] {
@@ -159,6 +172,7 @@ type tallied struct {
 	tally   *mv.Tally
 	account events.Account
 	perFile []int64 // rows read of each source
+	period  *record.Period
 }
 
 // count makes the tally in one parallel pass.
@@ -179,10 +193,11 @@ func (r *reading) count(ctx context.Context, sources []events.Source, w *pool, o
 		states[i] = state{tally: t, perFile: make([]int64, len(sources))}
 	}
 	screen := r.screen()
-	err := w.each(ctx, sources, r.columns(), func(worker, file int, b events.Batch) error {
+	account := func(worker int) (*events.Account, []int64) { return &states[worker].account, states[worker].perFile }
+	all, err := r.rows(ctx, sources, w, r.columns(), account, func(worker, file int, b events.Batch, k *picker) error {
 		s := &states[worker]
-		s.perFile[file] += int64(b.Len())
 		n := screen.Apply(b, &s.account)
+		k.note(file, b, n)
 		var weights []float64
 		if screen.Weighted {
 			weights = b.Columns[2][:n]
@@ -211,6 +226,7 @@ func (r *reading) count(ctx context.Context, sources []events.Source, w *pool, o
 			out.perFile[k] += n
 		}
 	}
+	out.period = all.period()
 	if !out.account.Balanced() {
 		return nil, fmt.Errorf("row account does not balance: %d read, %d used, %d set aside", out.account.Read, out.account.Used, out.account.SetAsideTotal())
 	}

@@ -25,6 +25,9 @@ func Describe(w io.Writer, res *Result) {
 		fmt.Fprintf(w, "; left out of %s rows: %s", progress.Count(rec.Rows.Read), strings.Join(left, ", "))
 	}
 	fmt.Fprintln(w, ".")
+	if p := rec.Period; p != nil {
+		fmt.Fprintf(w, "They are from %s to %s; the period counts %s years.\n", p.First, p.Last, Significant(p.Years))
+	}
 	var whole float64
 	if r := res.Release.Regions(); len(r) > 0 {
 		whole = r[len(r)-1].AreaKM2

@@ -88,12 +88,15 @@ type estimator struct {
 	progress  func(stage string)
 }
 
+// leastEvents is how few events still make a map.
+const leastEvents = 3
+
 // estimate turns a finished, trimmed tally into the density and its errors.
 func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 	lo, hi := m.tally.Bounds()
 	base := m.tally.Level()
 	n := m.tally.EffectiveN()
-	if m.tally.Events() < 3 {
+	if m.tally.Events() < leastEvents {
 		return nil, fmt.Errorf("%d events are too few for a map: %w", m.tally.Events(), mv.ErrDegenerate)
 	}
 	target := m.nodes

@@ -40,7 +40,7 @@ func estimated(t *testing.T, name string, flags map[string]string) (e *Estimate,
 	report := progress.New(io.Discard, progress.Silent)
 	defer report.Close()
 	r := &run{settings: s, report: report, clock: time.Now, workers: 2}
-	if r.sources, err = openAll(s.Inputs); err != nil {
+	if r.sources, err = openAll(t.Context(), s.Inputs); err != nil {
 		t.Fatal(err)
 	}
 	defer closeAll(r.sources)
@@ -76,7 +76,7 @@ func estimated(t *testing.T, name string, flags map[string]string) (e *Estimate,
 		}
 	}
 	var mu sync.Mutex
-	err = w.each(ctx, r.sources, in.columns(), func(_, _ int, b events.Batch) error {
+	err = w.each(ctx, r.sources, in.columns(), nil, func(_, _ int, b events.Batch) error {
 		mu.Lock()
 		defer mu.Unlock()
 		var a events.Account

@@ -94,7 +94,7 @@ type derivatives interface {
 // Evaluate writes density and errors at the query's rows.
 func Evaluate(ctx context.Context, s *config.EvaluateSettings, report *progress.Reporter) (*Evaluation, error) {
 	e := &evaluation{s: s, report: report, out: &Evaluation{Program: program(), Columns: s.Columns, Weight: s.Weight, Query: s.At}}
-	queries, err := openAll([]string{s.At})
+	queries, err := openAll(ctx, []string{s.At})
 	if err != nil {
 		return nil, err
 	}
@@ -186,7 +186,7 @@ func (e *evaluation) resultNames(queries []events.Source) ([]string, error) {
 
 // readEvents brings the events into memory, in the order of names and rows.
 func (e *evaluation) readEvents(ctx context.Context) error {
-	sources, err := openAll(e.s.Inputs)
+	sources, err := openAll(ctx, e.s.Inputs)
 	if err != nil {
 		return err
 	}

@@ -48,7 +48,7 @@ func Map(ctx context.Context, s *config.Settings, report *progress.Reporter, clo
 	if run.workers == 0 {
 		run.workers = runtime.GOMAXPROCS(0)
 	}
-	sources, err := openAll(s.Inputs)
+	sources, err := openAll(ctx, s.Inputs)
 	if err != nil {
 		return nil, err
 	}

@@ -1,6 +1,7 @@
 package pipeline
 
 import (
+	"context"
 	"errors"
 	"fmt"
 	"io"
@@ -11,14 +12,18 @@ import (
 	"strings"
 
 	"drumlin/io/arrowfile"
+	"drumlin/io/bundle"
 	"drumlin/io/csvfile"
 	"drumlin/io/events"
+	"drumlin/io/geoparquet"
+	"drumlin/io/packed"
 	"drumlin/io/parquetfile"
+	"drumlin/io/partition"
 )
 
 // openAll opens every input, in the order of their names, folders and globs
 // expanded. On error everything opened so far is closed.
-func openAll(inputs []string) (sources []events.Source, err error) {
+func openAll(ctx context.Context, inputs []string) (sources []events.Source, err error) {
 	defer func() {
 		if err != nil {
 			closeAll(sources)
@@ -38,13 +43,13 @@ func openAll(inputs []string) (sources []events.Source, err error) {
 		if i > 0 && p == paths[i-1] {
 			return sources, &events.Fault{Kind: events.ErrSetting, File: p, What: "the same file is given twice", Remedy: "give it once"}
 		}
-		s, err := openOne(p)
+		s, err := openOne(ctx, p)
 		if err != nil {
 			return sources, err
 		}
 		sources = append(sources, s)
 	}
-	return sources, nil
+	return partition.Wrap(sources, paths), nil
 }
 
 func closeAll(sources []events.Source) {
@@ -59,6 +64,8 @@ func closeAll(sources []events.Source) {
 func expand(input string) ([]string, error) {
 	info, err := os.Stat(input)
 	switch {
+	case input == stdinName:
+		return []string{input}, nil
 	case err == nil && !info.IsDir():
 		return []string{input}, nil
 	case err == nil:
@@ -100,19 +107,18 @@ func expand(input string) ([]string, error) {
 	return nil, &events.Fault{Kind: events.ErrMissing, File: input, What: "the input cannot be opened", Cause: err}
 }
 
-// openOne tells the format from the content and opens the file.
-func openOne(path string) (events.Source, error) {
+// sniffed says what a file holds, by its first and last bytes.
+func sniffed(path string) (string, error) {
 	f, err := os.Open(path)
 	if err != nil {
-		return nil, &events.Fault{Kind: events.ErrMissing, File: path, What: "the input cannot be opened", Cause: err}
+		return "", &events.Fault{Kind: events.ErrMissing, File: path, What: "the input cannot be opened", Cause: err}
 	}
-	head := make([]byte, 4096)
+	defer f.Close()
+	head := make([]byte, sniffBytes)
 	n, err := io.ReadFull(f, head)
 	if err != nil && !errors.Is(err, io.ErrUnexpectedEOF) && !errors.Is(err, io.EOF) {
-		f.Close()
-		return nil, &events.Fault{Kind: events.ErrMissing, File: path, What: "the input cannot be read", Cause: err}
+		return "", &events.Fault{Kind: events.ErrMissing, File: path, What: "the input cannot be read", Cause: err}
 	}
-	head = head[:n]
 	var tail []byte
 	if info, err := f.Stat(); err == nil && info.Size() >= 8 {
 		tail = make([]byte, 8)
@@ -120,14 +126,53 @@ func openOne(path string) (events.Source, error) {
 			tail = nil
 		}
 	}
-	f.Close()
-	switch format := events.Sniff(head, tail); format {
+	return events.Sniff(head[:n], tail), nil
+}
+
+const sniffBytes = 4096
+
+// openOne tells the format from the content and opens the file; "-" is standard
+// input, kept in a temporary file so that it can be read twice.
+func openOne(ctx context.Context, path string) (events.Source, error) {
+	if path != stdinName {
+		return openFile(ctx, path)
+	}
+	temp, err := spool(ctx, os.Stdin, stdinName)
+	if err != nil {
+		return nil, err
+	}
+	s, err := openFile(ctx, temp)
+	if err != nil {
+		_ = os.Remove(temp) // the first error is the one to tell
+		return nil, packed.Rename(err, temp, "standard input")
+	}
+	i := s.Info()
+	return &packed.Spooled{Source: s, Name: stdinName, Format: i.Format, Bytes: -1, Digest: temp, Temp: temp}, nil
+}
+
+const stdinName = "-"
+
+func openFile(ctx context.Context, path string) (events.Source, error) {
+	format, err := sniffed(path)
+	if err != nil {
+		return nil, err
+	}
+	if format == events.FormatGzip || format == events.FormatZstd {
+		return openPacked(ctx, path, format)
+	}
+	s, err := openPlain(path, format)
+	if err == nil && format == events.FormatCSV && strings.EqualFold(filepath.Ext(path), ".parquet") {
+		return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "named .parquet but holds text", Remedy: "give the file its right ending, or the right file"}
+	}
+	return s, err
+}
+
+// openPlain opens a file that is not packed.
+func openPlain(path, format string) (events.Source, error) {
+	switch format {
 	case events.FormatParquet:
-		return parquetfile.Open(path, parquetfile.Options{})
+		return geoparquet.Open(path, parquetfile.Options{})
 	case events.FormatCSV:
-		if strings.EqualFold(filepath.Ext(path), ".parquet") {
-			return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "named .parquet but holds text", Remedy: "give the file its right ending, or the right file"}
-		}
 		return csvfile.Open(path)
 	case events.FormatArrowFile, events.FormatArrowStream:
 		return arrowfile.Open(path, arrowfile.Options{})
@@ -135,7 +180,69 @@ func openOne(path string) (events.Source, error) {
 		return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "the file is empty", Remedy: "check how it was made"}
 	case events.FormatUnknown:
 		return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "the content is neither Parquet, Arrow nor text with columns", Remedy: "give a Parquet, Arrow or CSV file"}
-	default:
-		return nil, &events.Fault{Kind: events.ErrUnsupported, File: path, What: fmt.Sprintf("the content is %s, which is not read yet", format), Remedy: "give a Parquet, Arrow or CSV file"}
 	}
+	return nil, &events.Fault{Kind: events.ErrUnsupported, File: path, What: fmt.Sprintf("the content is %s, which is not read yet", format), Remedy: "give a Parquet, Arrow or CSV file"}
+}
+
+// openPacked opens a gzip or zstd file: text is unpacked anew for every pass,
+// other formats into a temporary file, for they are read out of order.
+func openPacked(ctx context.Context, path, format string) (events.Source, error) {
+	broken := func(err error) error {
+		return &events.Fault{Kind: events.ErrMalformed, File: path, What: "the " + format + " content cannot be unpacked", Remedy: "write the file again or leave it out", Cause: err}
+	}
+	head, err := packed.Head(path, format, sniffBytes)
+	if err != nil {
+		return nil, broken(err)
+	}
+	within := events.Sniff(head, nil)
+	if within == events.FormatCSV {
+		unpack := func(r io.Reader) (io.ReadCloser, error) { return packed.Reader(format, r) }
+		return csvfile.OpenPacked(path, unpack, events.FormatCSV+" in "+format)
+	}
+	if within != events.FormatParquet && within != events.FormatArrowFile && within != events.FormatArrowStream {
+		_, err := openPlain(path, within)
+		var f *events.Fault
+		if errors.As(err, &f) {
+			f.What += " (within " + format + ")"
+		}
+		return nil, err
+	}
+	in, err := os.Open(path)
+	if err != nil {
+		return nil, &events.Fault{Kind: events.ErrMissing, File: path, What: "the input cannot be opened", Cause: err}
+	}
+	defer in.Close()
+	z, err := packed.Reader(format, in)
+	if err != nil {
+		return nil, broken(err)
+	}
+	defer z.Close()
+	temp, err := spool(ctx, z, path)
+	if err != nil {
+		return nil, err
+	}
+	s, err := openPlain(temp, within)
+	if err != nil {
+		_ = os.Remove(temp) // the first error is the one to tell
+		return nil, packed.Rename(err, temp, path)
+	}
+	size := int64(-1)
+	if info, err := in.Stat(); err == nil {
+		size = info.Size()
+	}
+	return &packed.Spooled{Source: s, Name: path, Format: within + " in " + format, Bytes: size, Digest: path, Temp: temp}, nil
+}
+
+// spool keeps a stream in a temporary file.
+func spool(ctx context.Context, r io.Reader, name string) (string, error) {
+	temp, err := packed.Spool(ctx, r)
+	switch {
+	case err == nil:
+		return temp, nil
+	case errors.Is(err, packed.ErrSpool):
+		return "", fmt.Errorf("%s: %w: %w", name, bundle.ErrOutput, err)
+	case ctx.Err() != nil:
+		return "", ctx.Err()
+	}
+	return "", &events.Fault{Kind: events.ErrMalformed, File: name, What: "the stream cannot be read to its end", Remedy: "check how it was made", Cause: err}
 }

@@ -13,6 +13,7 @@ import (
 // reading is how the columns of all sources are read and projected.
 type reading struct {
 	x, y, weight string
+	pick         *pick          // rows that are looked at; nil: all
 	input        spatial.CRSRef // of the coordinates
 	inputName    string
 	plane        spatial.Projection // of the estimate
@@ -54,7 +55,7 @@ func (r *reading) project(x, y []float64) spatial.XYs {
 func resolve(s *config.Settings, sources []events.Source) (*reading, error) {
 	r := &reading{weight: s.Weight}
 	for i, src := range sources {
-		pair, err := events.Resolve(s.X, s.Y, "", src.Fields())
+		pair, err := events.ResolveIn(s.X, s.Y, s.Geometry, src.Info(), src.Fields())
 		if err == nil && s.Weight != "" {
 			err = events.CheckNumeric(s.Weight, src.Fields())
 		}
@@ -82,17 +83,26 @@ func resolve(s *config.Settings, sources []events.Source) (*reading, error) {
 		return nil, fmt.Errorf("--crs: %w", err)
 	}
 	r.input = ref
+	if r.pick, err = newPick(s, sources); err != nil {
+		return nil, err
+	}
 	return r, nil
 }
 
 func inputCRS(asked string, pair events.Pair, src events.Source) (string, error) {
-	switch own := src.Info().CRS; {
+	own := src.Info().CRS
+	for _, g := range src.Info().Geometries {
+		if g.Name == pair.Geometry {
+			own = g.CRS
+		}
+	}
+	switch {
 	case asked != "":
 		return asked, nil
-	case own != "":
-		return own, nil
 	case pair.Degrees:
 		return "EPSG:4326", nil
+	case own != "":
+		return own, nil
 	}
 	return "", inFile(&events.Fault{Kind: events.ErrSetting, What: fmt.Sprintf("the CRS of columns %s and %s is not known", pair.X, pair.Y), Remedy: "state it with --crs EPSG:n, or --crs plane for metres without a place"}, src)
 }

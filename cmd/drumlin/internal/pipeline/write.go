@@ -59,7 +59,7 @@ func (r *run) startDigests(ctx context.Context) *digestJob {
 			if j.err = ctx.Err(); j.err != nil {
 				return
 			}
-			if j.digests[i], _, j.err = record.FileDigest(s.Info().Name); j.err != nil {
+			if j.digests[i], _, j.err = record.FileDigest(s.Info().DigestPath()); j.err != nil {
 				j.err = &events.Fault{Kind: events.ErrMissing, File: s.Info().Name, What: "the file cannot be read again for its digest", Cause: j.err}
 				return
 			}
@@ -97,6 +97,7 @@ func (r *run) record(in *reading, c *tallied, e *Estimate, rel *spatial.Release,
 		Bandwidth: bandwidthRecord(e),
 		Regions:   record.Regions{Rule: s.RegionRule, Text: record.RegionRuleText(s.RegionRule), Contents: contents(s.Content)},
 		Guard:     guardRecord(rel),
+		Period:    c.period,
 		Warnings:  r.warnings,
 		Cautions:  record.Cautions(),
 		Inputs:    inputs,
@@ -135,6 +136,16 @@ func (r *run) recordedSettings(in *reading) record.Settings {
 	out := record.Settings{
 		{Name: "x", Value: in.x}, {Name: "y", Value: in.y}, {Name: "crs", Value: in.inputName}, {Name: "work-crs", Value: s.WorkCRS},
 		{Name: "weight", Value: s.Weight}, {Name: "bandwidth", Value: s.Bandwidth}, {Name: "shape", Value: s.Shape},
+	}
+	for _, v := range []struct{ name, value string }{
+		{"geometry", s.Geometry}, {"where", s.Where}, {"time", s.Time}, {"from", s.From}, {"until", s.Until},
+	} {
+		if v.value != "" {
+			out = append(out, record.Setting{Name: v.name, Value: v.value})
+		}
+	}
+	if in.pick != nil {
+		out = append(out, record.Setting{Name: "zone", Value: s.Zone})
 	}
 	if len(s.Matrix) > 0 {
 		out = append(out, record.Setting{Name: "matrix", Value: s.Matrix})
@@ -259,6 +270,9 @@ const Version = "0.1.0"
 // write puts the release and the record into the bundle and publishes it.
 func (r *run) write(ctx context.Context, b *bundle.Bundle, rel *spatial.Release, rec *record.Record, page report.Page) error {
 	meta := geojson.Meta{Weighted: r.settings.Weight != "", Caution: record.Caution}
+	if rec.Period != nil {
+		meta.Years = rec.Period.Years
+	}
 	if r.settings.Weight != "" {
 		meta.Unit = "weight per km2"
 	}
