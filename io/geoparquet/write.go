@@ -1,16 +1,3 @@
-// Package geoparquet writes layers as GeoParquet 1.1 and the surface's nodes as
-// plain Parquet.
-//
-// A layer has the columns id, geometry (WKB, little-endian, exterior rings
-// anticlockwise), bbox (a group of xmin, ymin, xmax, ymax, which the metadata
-// names as the geometry's covering) and those of the GeoJSON file; what is not
-// known is null. Positions are longitude and latitude on WGS 84 (the format's
-// default, OGC:CRS84), or metres with a null CRS.
-//
-// Everything is zstd, one row group to a million rows, and the same input gives
-// the same bytes.
-//
-// Source: GeoParquet 1.1.0 (OGC); its metadata schema is checked in the tests.
 package geoparquet
 
 import (
