@@ -45,7 +45,7 @@ std, gonum < mv/internal < mv < mv/mvtest
 mv, gonum/optimize < bandwidth
 mv, orb, simplefeatures < spatial
 std < io/events, io/record, io/internal < plain readers, arrow readers
-arrow, packing < arrow readers < io/geoparquet
+arrow, packing < arrow readers < table writers
 std, io/events, packing < io/packed
 spatial, io/events, io/record, io/internal, packing < writers < io/report, io/bundle
 drawing < io/report
