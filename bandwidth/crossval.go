@@ -128,15 +128,7 @@ func unthinned(e Events, h mv.BandwidthMatrix) mv.BandwidthMatrix {
 // descendFrom minimises a criterion of the data in the frame.
 func (f *frame) descendFrom(e Events, shape Shape, crit Criterion, from [][]float64, descents int, high float64) (Choice, error) {
 	s := search{shape: shape, starts: from, descents: descents, low: f.floor(e), high: high}
-	inFrame := func(h mv.BandwidthMatrix) (float64, []float64) {
-		real, err := f.toData(h)
-		if err != nil {
-			return math.Inf(1), make([]float64, f.d*f.d)
-		}
-		v, g := crit(real)
-		return v * f.det, scaleAll(f.gradient(g), f.det)
-	}
-	found, err := s.run(inFrame, f.d)
+	found, err := s.run(f.inFrame(crit), f.d)
 	if err != nil {
 		return Choice{}, err
 	}
@@ -206,4 +198,16 @@ func scaleAll(v []float64, c float64) []float64 {
 		v[i] *= c
 	}
 	return v
+}
+
+// inFrame carries a criterion of the data to the frame.
+func (f *frame) inFrame(crit Criterion) Criterion {
+	return func(h mv.BandwidthMatrix) (float64, []float64) {
+		real, err := f.toData(h)
+		if err != nil {
+			return math.Inf(1), make([]float64, f.d*f.d)
+		}
+		v, g := crit(real)
+		return v * f.det, scaleAll(f.gradient(g), f.det)
+	}
 }

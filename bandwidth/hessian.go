@@ -26,7 +26,7 @@ func Hessian(e Events) (Choice, error) {
 	if err := e.check(); err != nil {
 		return Choice{}, err
 	}
-	f, err := newFrame(CommonScale, e)
+	f, err := newFrame(CommonScale, e.dim(), e.Covariance)
 	if err != nil {
 		return Choice{}, err
 	}

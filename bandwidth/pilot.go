@@ -1,7 +1,9 @@
 package bandwidth
 
 import (
+	"cmp"
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/mat"
 
@@ -23,7 +25,9 @@ func pilotFor(r int, n float64, psi []float64, start mv.BandwidthMatrix) (mv.Ban
 	c := coords{d, Full}
 	p := newBiasVector(r, d, n, psi)
 	best, bestNorm := mv.BandwidthMatrix{}, math.Inf(1)
-	for _, x := range starts(start, c) {
+	from := starts(start, c)
+	slices.SortStableFunc(from, func(x, y []float64) int { return cmp.Compare(p.norm(c, x), p.norm(c, y)) })
+	for _, x := range from[:min(3, len(from))] {
 		norm := p.descend(c, x)
 		h, err := mv.NewBandwidthMatrix(d, c.matrix(x))
 		if err == nil && norm < bestNorm*(1-1e-9) {
@@ -89,20 +93,30 @@ func (p *biasVector) at(g mv.BandwidthMatrix) (res []float64, jac [][]float64) {
 	return res, jac
 }
 
+// norm returns the squared norm of the bias vector.
+func (p *biasVector) norm(c coords, x []float64) float64 {
+	h, err := mv.NewBandwidthMatrix(p.d, c.matrix(x))
+	if err != nil {
+		return math.Inf(1)
+	}
+	low := mv.NormalDerivativesAtZero(h, p.r)
+	var sum float64
+	for q := range p.index {
+		v := low[q] / p.n
+		for ij, up := range p.up2[q] {
+			v += 0.5 * h.At(ij/p.d, ij%p.d) * p.psi[up]
+		}
+		sum += p.root[q] * p.root[q] * v * v
+	}
+	return sum
+}
+
 // descend runs Levenberg-Marquardt in place and returns the squared norm at
 // the end.
 func (p *biasVector) descend(c coords, x []float64) float64 {
-	norm := func(x []float64) float64 {
-		h, err := mv.NewBandwidthMatrix(p.d, c.matrix(x))
-		if err != nil {
-			return math.Inf(1)
-		}
-		res, _ := p.at(h)
-		return dot(res, res)
-	}
 	m := c.len()
 	lambda := 1e-3
-	now := norm(x)
+	now := p.norm(c, x)
 	for range 200 {
 		h, err := mv.NewBandwidthMatrix(p.d, c.matrix(x))
 		if err != nil {
@@ -120,7 +134,7 @@ func (p *biasVector) descend(c coords, x []float64) float64 {
 				}
 			}
 		}
-		improved, moved := false, 0.0
+		improved, moved, before := false, 0.0, now
 		for ; lambda < 1e12; lambda *= 8 {
 			damped := mat.NewSymDense(m, nil)
 			damped.CopySym(jtj)
@@ -139,26 +153,18 @@ func (p *biasVector) descend(c coords, x []float64) float64 {
 				trial[a] = x[a] - s
 				moved = math.Max(moved, math.Abs(s))
 			}
-			if v := norm(trial); v < now {
+			if v := p.norm(c, trial); v < now {
 				copy(x, trial)
 				now, improved = v, true
 				lambda = math.Max(lambda/10, 1e-15)
 				break
 			}
 		}
-		if !improved || moved < 1e-13 {
+		if !improved || moved < 1e-10 || before-now < 1e-15*now {
 			break
 		}
 	}
 	return now
-}
-
-func dot(a, b []float64) float64 {
-	var s float64
-	for i := range a {
-		s += a[i] * b[i]
-	}
-	return s
 }
 
 // scalarPilot returns the multiple g^2 I that minimises the squared norm of the

@@ -77,7 +77,7 @@ func plugIn(e Events, opt Options) (Choice, *frame, error) {
 	if err := errors.Join(e.check(), opt.check()); err != nil {
 		return Choice{}, nil, err
 	}
-	f, err := newFrame(opt.Frame, e)
+	f, err := newFrame(opt.Frame, e.dim(), e.Covariance)
 	if err != nil {
 		return Choice{}, nil, err
 	}

@@ -27,7 +27,8 @@ type search struct {
 	// made; 0 means all. The criterion is evaluated at every start anyway.
 	descents int
 	// low and high bound the eigenvalues of H; beyond them a steep wall stands.
-	// 0 means none.
+	// 0 means none. With high set, an end at the wall counts only where no
+	// descent ends elsewhere: a local minimum is wanted.
 	low, high float64
 }
 
@@ -87,7 +88,11 @@ func (s search) run(f Criterion, d int) (minimum, error) {
 		if end.status != Stopped {
 			ends = append(ends, end)
 		}
-		if end.value < best.value {
+		lower := end.value < best.value
+		if s.high > 0 && best.matrix.Dim() > 0 && (end.status == Border) != (best.status == Border) {
+			lower = best.status == Border
+		}
+		if lower {
 			best.value, best.matrix, best.status = end.value, end.matrix, end.status
 		}
 	}

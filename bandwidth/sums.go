@@ -120,25 +120,24 @@ type frame struct {
 	maps  map[int][][]float64
 }
 
-func newFrame(kind Frame, e Events) (*frame, error) {
-	d := e.dim()
+func newFrame(kind Frame, d int, cov []float64) (*frame, error) {
 	f := &frame{d: d, a: make([]float64, d*d), s: make([]float64, d*d), det: 1, round: kind == CommonScale, maps: map[int][][]float64{}}
 	switch kind {
 	case CommonScale, Prescaled:
 		for k := range d {
-			f.a[k*d+k] = e.scale()
+			f.a[k*d+k] = commonScale(d, cov)
 			if kind == Prescaled {
-				f.a[k*d+k] = math.Sqrt(e.Covariance[k*d+k])
+				f.a[k*d+k] = math.Sqrt(cov[k*d+k])
 			}
 			f.det *= f.a[k*d+k]
 		}
 		for i := range d {
 			for j := range d {
-				f.s[i*d+j] = e.Covariance[i*d+j] / (f.a[i*d+i] * f.a[j*d+j])
+				f.s[i*d+j] = cov[i*d+j] / (f.a[i*d+i] * f.a[j*d+j])
 			}
 		}
 	case Sphered:
-		values, vectors, err := eigen(d, e.Covariance)
+		values, vectors, err := eigen(d, cov)
 		if err != nil {
 			return nil, err
 		}

@@ -64,7 +64,8 @@ func (o LatticeOptions) Validate() error {
 // Gaussian, is K_H(0) plus its copies less the sum over the kept; for a compact
 // kernel of power p it is bounded through |J_v(s)| <= (2/pi)^{1/2}
 // (s^2-v^2)^{-1/4} when p > (d-1)/2, and otherwise there is no bound: Bound is
-// +Inf and every query goes to the tree unless Alone is set.
+// +Inf. Where no lattice could meet the tolerance, there is none and the tree
+// answers every query, unless Alone is set.
 //
 // Source: the idea of spreading, transforming and deconvolving is that of
 // non-uniform fast Fourier transforms, Dutt & Rokhlin 1993, with B-splines as
@@ -104,6 +105,10 @@ func NewLatticeEvaluator(s *Sample, k Kernel, h BandwidthMatrix, opt LatticeOpti
 	if e.plan, err = planLattice(s, k, h, opt); err != nil {
 		return nil, err
 	}
+	if e.plan.order == 0 {
+		e.bound = math.Inf(1)
+		return e, nil
+	}
 	e.transform()
 	var aliased, kept float64
 	e.coef, aliased, kept = e.field(nil)
@@ -127,7 +132,7 @@ func (e *LatticeEvaluator) Tolerance() (rtol, atol float64) { return e.rtol, e.a
 // anywhere, in density units; +Inf where no bound is known.
 func (e *LatticeEvaluator) Bound() float64 { return e.bound }
 
-// Nodes returns the nodes per axis.
+// Nodes returns the nodes per axis, none where the tree answers everything.
 func (e *LatticeEvaluator) Nodes() []int { return append([]int(nil), e.plan.nodes...) }
 
 // SplineOrder returns w: an event touches w nodes per axis.
@@ -142,7 +147,13 @@ func (e *LatticeEvaluator) Density(ctx context.Context, dst []float64, queries [
 // DensityCount is Density and returns how many queries the tree answered
 // because the lattice's bound did not suffice there.
 func (e *LatticeEvaluator) DensityCount(ctx context.Context, dst []float64, queries [][]float64) (byTree int, err error) {
-	if err := e.read(ctx, dst, queries, e.coef); err != nil {
+	if e.coef != nil {
+		if err := e.read(ctx, dst, queries, e.coef); err != nil {
+			return 0, err
+		}
+	} else if m, err := checkQueries(e.s.d, queries); err != nil {
+		return 0, err
+	} else if err := checkDst(dst, m); err != nil {
 		return 0, err
 	}
 	var open []int
@@ -195,6 +206,9 @@ func (e *LatticeEvaluator) Derivatives(ctx context.Context, dst [][]float64, que
 		if err := differentiable(e.kernel, k); err != nil {
 			return err
 		}
+	}
+	if e.coef == nil && len(ks) > 0 {
+		return fmt.Errorf("mv: derivatives of the %s kernel on a lattice: none meets rtol %g: ask for the lattice alone: %w", e.kernel, e.rtol, ErrNotDifferentiable)
 	}
 	for j, k := range ks {
 		coef, _, _ := e.field(k)

@@ -4,6 +4,8 @@ import (
 	"fmt"
 	"math"
 
+	"gonum.org/v1/gonum/mathext"
+
 	"drumlin/mv/internal/fft"
 )
 
@@ -34,12 +36,12 @@ func (p latticePlan) cells() float64 {
 	return n
 }
 
-// work estimates the nanoseconds of one core to spread and transform, and per query.
-func (p latticePlan) work(n int) (build, query float64) {
+// work estimates the nanoseconds of one core to prepare and, each, for a query.
+func (p latticePlan) work(n int) (build, each float64) {
 	d := float64(len(p.nodes))
 	touch := math.Pow(float64(p.order), d)
-	each := 40 + d*float64(p.order*p.order) + 0.9*touch
-	return float64(n)*each + p.cells()*(25+6*d), each
+	each = 60 + 1.5*d*float64(p.order*p.order) + 1.4*touch
+	return float64(n)*each + p.cells()*(60+25*d), each
 }
 
 // planLattice chooses order, oversampling and steps for the least cost among
@@ -53,7 +55,7 @@ func planLattice(s *Sample, k Kernel, h BandwidthMatrix, opt LatticeOptions) (la
 	}
 	most := float64(memory) / bytesPerNode
 	if k != Gaussian {
-		return planCompact(s, k, h, min(most, 1<<22))
+		return planCompact(s, k, h, opt, most)
 	}
 	peak := k.Norm(s.d) / h.SqrtDet()
 	target := opt.Rtol * 1e-5
@@ -95,10 +97,11 @@ func planLattice(s *Sample, k Kernel, h BandwidthMatrix, opt LatticeOptions) (la
 // planGaussian returns the smallest spline order that meets the target.
 func planGaussian(s *Sample, h BandwidthMatrix, target, over float64) (latticePlan, bool) {
 	d := float64(s.d)
-	radius := 3.0
-	for math.Exp(-radius*radius/2)*(1+math.Pow(radius, d))*d > target/4 {
+	radius := 1.0 // the Gaussian's mass beyond it is a quarter of the target
+	for mathext.GammaIncRegComp(d/2, radius*radius/2) > target/4 {
 		radius += 0.02
 	}
+	reach := math.Sqrt(2 * math.Log(8*d/target))
 	for order := 4; order <= 14; order += 2 {
 		// The mean of a over the kernel's own normal spectrum, twice per axis.
 		var mean float64
@@ -111,24 +114,38 @@ func planGaussian(s *Sample, h BandwidthMatrix, target, over float64) (latticePl
 			continue
 		}
 		p := latticePlan{order: order, over: over, radius: radius, rounding: 3e-14}
-		p.copies = 2 * d * 1.01 * math.Exp(-radius*radius/2)
-		return p, p.shape(s, h, radius, 0)
+		p.copies = 2 * d * 1.01 * math.Exp(-reach*reach/2)
+		return p, p.shape(s, h, reach, 0)
 	}
 	return latticePlan{}, false
 }
 
-// planCompact gives a compact kernel the finest lattice of at most the given
-// number of nodes, 512 steps per scale and half axis at most.
-func planCompact(s *Sample, k Kernel, h BandwidthMatrix, most float64) (latticePlan, error) {
-	nu := float64(s.d)/2 + float64(k.power())
+// planCompact gives a compact kernel the coarsest lattice whose cut-off part
+// meets the target, or, for a lattice alone, the finest of at most 2^20 nodes. No
+// order means that there is none and the tree must answer.
+func planCompact(s *Sample, k Kernel, h BandwidthMatrix, opt LatticeOptions, most float64) (latticePlan, error) {
+	least := max(1.1*math.Pi, float64(s.d+2*k.power()))
 	p := latticePlan{order: 8, over: 2, rounding: 3e-14}
-	for radius := 512 * math.Pi; radius >= 2*nu && radius > math.Pi; radius *= 0.9 {
-		p.radius = radius
-		if p.shape(s, h, 1.001, most) {
+	if !opt.Alone {
+		peak := k.Norm(s.d) / h.SqrtDet()
+		target := max(opt.Rtol*1e-2, opt.Atol/peak/2)
+		for radius := least; radius <= 512*math.Pi; radius *= 1.2 {
+			if p.radius = radius; compactCutOff(k, h, radius) <= target*peak {
+				if p.shape(s, h, 1.001, min(most, 1<<22)) {
+					return p, nil
+				}
+				break
+			}
+		}
+		return latticePlan{}, nil
+	}
+	most = min(most, 1<<20)
+	for radius := 512 * math.Pi; radius >= least; radius *= 0.9 {
+		if p.radius = radius; p.shape(s, h, 1.001, most) {
 			return p, nil
 		}
 	}
-	return latticePlan{}, fmt.Errorf("mv: lattice evaluator: fewer than %.0f nodes cannot show the %s kernel with %s: %w", most, k, h, ErrTooLarge)
+	return latticePlan{}, fmt.Errorf("mv: lattice evaluator: %.0f nodes cannot show the %s kernel with %s: %w", most, k, h, ErrTooLarge)
 }
 
 // shape fills the geometry: a period of the extent and two reaches, in scales.
@@ -190,20 +207,24 @@ func powInt(x float64, n int) float64 {
 // cutOff bounds (1/V) sum |k(t)| over the frequencies not kept; kept is the
 // sum over those that are.
 func (e *LatticeEvaluator) cutOff(kept float64) float64 {
-	d := float64(e.s.d)
 	if e.kernel == Gaussian {
 		// The sum over all frequencies is that of K_H over its periodic copies.
 		return max(0, e.peak*(1+e.plan.copies)-kept)
 	}
-	p := float64(e.kernel.power())
+	return compactCutOff(e.kernel, e.h, e.plan.radius)
+}
+
+// compactCutOff bounds (1/V) sum |k(t)| over t'Ht > radius^2, radius >= d+2p:
+// |k| <= Gamma(v+1) (2/s)^v (2/(pi s))^{1/2} (3/4)^{-1/4} for s >= 2v, v = d/2+p;
+// a tenth is added for the sum over a lattice in place of the integral.
+func compactCutOff(k Kernel, h BandwidthMatrix, radius float64) float64 {
+	d, p := float64(h.d), float64(k.power())
 	nu := d/2 + p
 	rest := nu + 0.5 - d
-	if rest <= 0 || e.plan.radius < 2*nu {
+	if rest <= 0 || radius < 2*nu {
 		return math.Inf(1)
 	}
-	// |k| <= Gamma(nu+1) (2/s)^nu (2/(pi s))^{1/2} (3/4)^{-1/4} for s >= 2 nu;
-	// a tenth is added for the sum over a lattice in place of the integral.
-	sphere := 2 * math.Pow(math.Pi, d/2) / gammaHalf(e.s.d)
-	c := gammaHalf(e.s.d+2*e.kernel.power()+2) * math.Pow(2, nu) * math.Sqrt(2/math.Pi) * math.Pow(0.75, -0.25)
-	return 1.1 * math.Pow(2*math.Pi, -d) / e.h.SqrtDet() * sphere * c * math.Pow(e.plan.radius, -rest) / rest
+	sphere := 2 * math.Pow(math.Pi, d/2) / gammaHalf(h.d)
+	c := gammaHalf(h.d+2*k.power()+2) * math.Pow(2, nu) * math.Sqrt(2/math.Pi) * math.Pow(0.75, -0.25)
+	return 1.1 * math.Pow(2*math.Pi, -d) / h.SqrtDet() * sphere * c * math.Pow(radius, -rest) / rest
 }

@@ -2,8 +2,10 @@ package mv_test
 
 import (
 	"context"
+	"fmt"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"testing"
 	"time"
 
@@ -105,4 +107,87 @@ func BenchmarkTreeSixDimensions(b *testing.B) {
 		b.Fatal(err)
 	}
 	benchmarkTree(b, s, h, queries, 10)
+}
+
+// BenchmarkPlanePlans is the five ridges by every method in one run, building
+// included: 100,000 events, scale 150, 128 x 128 queries, rtol 1e-6 and 1e-3.
+// Errors are those against the direct sum on every 64th query.
+func BenchmarkPlanePlans(b *testing.B) {
+	s := mvtest.FiveRidges(rand.New(rand.NewPCG(1, 2)), 100_000)
+	h, err := mv.ScalarBandwidth(2, 150)
+	if err != nil {
+		b.Fatal(err)
+	}
+	queries := mv.LatticePoints(mvtest.GridOver(s, 128, 300))
+	comparePlans(b, s, h, queries, 64)
+}
+
+// BenchmarkSpacePlans is the same in three dimensions: 20,000 events, 8,000
+// queries.
+func BenchmarkSpacePlans(b *testing.B) {
+	s := clumps(b, 3, 3, 20_000)
+	comparePlans(b, s, tilted(b, 3, 0.25, 2), mv.LatticePoints(mvtest.GridOver(s, 20, 0.5)), 16)
+}
+
+func comparePlans(b *testing.B, s *mv.Sample, h mv.BandwidthMatrix, queries [][]float64, every int) {
+	ctx := context.Background()
+	m := len(queries[0])
+	part := make([][]float64, len(queries))
+	for k, c := range queries {
+		for i := 0; i < m; i += every {
+			part[k] = append(part[k], c[i])
+		}
+	}
+	direct, err := mv.NewDirect(s, mv.Gaussian, h, mv.EvalOptions{})
+	if err != nil {
+		b.Fatal(err)
+	}
+	want := make([]float64, len(part[0]))
+	begin := time.Now()
+	if err := direct.Density(ctx, want, part); err != nil {
+		b.Fatal(err)
+	}
+	directTime := time.Since(begin).Seconds() * float64(m) / float64(len(part[0]))
+	peak := slices.Max(want)
+	for _, rtol := range []float64{1e-6, 1e-3, 0} { // 0: 1e-6 of the highest density, absolute
+		for _, method := range []mv.Method{mv.MethodTree, mv.MethodLattice} {
+			b.Run(fmt.Sprintf("%s/rtol=%g", method, rtol), func(b *testing.B) {
+				got := make([]float64, m)
+				var byTree int
+				for b.Loop() {
+					o := mv.PlanOptions{Queries: m, Rtol: rtol, Force: method}
+					if rtol == 0 {
+						o.Atol = 1e-6 * peak
+					}
+					p, err := mv.NewPlan(s, mv.Gaussian, h, o)
+					if err != nil {
+						b.Fatal(err)
+					}
+					e, err := p.Evaluator(s, mv.Gaussian, h)
+					if err != nil {
+						b.Fatal(err)
+					}
+					if l, ok := e.(*mv.LatticeEvaluator); ok {
+						byTree, err = l.DensityCount(ctx, got, queries)
+					} else {
+						err = e.Density(ctx, got, queries)
+					}
+					if err != nil {
+						b.Fatal(err)
+					}
+				}
+				var worst float64
+				for i, w := range want {
+					if e := math.Abs(got[i*every] - w); rtol == 0 {
+						worst = max(worst, e/(1e-6*peak))
+					} else if w > 0 {
+						worst = max(worst, e/w/rtol)
+					}
+				}
+				b.ReportMetric(directTime/(b.Elapsed().Seconds()/float64(b.N)), "times-direct")
+				b.ReportMetric(worst, "error/bound")
+				b.ReportMetric(float64(byTree)/float64(m), "by-tree")
+			})
+		}
+	}
 }

@@ -5,8 +5,6 @@ import (
 	"fmt"
 	"math"
 	"sort"
-
-	"gonum.org/v1/gonum/mat"
 )
 
 // Mode is a local maximum of a density estimate.
@@ -38,6 +36,18 @@ func (o ModeOptions) Validate() error {
 	return nil
 }
 
+func (o *ModeOptions) fill() {
+	if o.Tolerance == 0 {
+		o.Tolerance = 1e-6
+	}
+	if o.Merge == 0 {
+		o.Merge = 1e-3
+	}
+	if o.MaxIterations == 0 {
+		o.MaxIterations = 2000
+	}
+}
+
 // Modes climbs the estimate from every start (d columns of coordinates) and
 // returns the distinct maxima reached, highest first. A step is Newton's where
 // the Hessian is negative definite and the step raises the density, else the
@@ -58,15 +68,7 @@ func (e *Direct) Modes(ctx context.Context, starts [][]float64, opt ModeOptions)
 	if e.kernel == Uniform {
 		return nil, fmt.Errorf("mv: modes of the uniform kernel: %w", ErrNotDifferentiable)
 	}
-	if opt.Tolerance == 0 {
-		opt.Tolerance = 1e-6
-	}
-	if opt.Merge == 0 {
-		opt.Merge = 1e-3
-	}
-	if opt.MaxIterations == 0 {
-		opt.MaxIterations = 2000
-	}
+	opt.fill()
 	ends := make([]climbEnd, m)
 	err = overChunks(ctx, e.opt.Workers, m, 1, func(i, _, _ int) {
 		c := newClimber(e)
@@ -186,25 +188,20 @@ func (c *climber) newton() bool {
 		return false
 	}
 	d := c.e.s.d
-	neg := mat.NewSymDense(d, nil)
-	for a := range d {
-		for b := range a + 1 {
-			neg.SetSym(a, b, -c.hess[a*d+b])
-		}
-	}
-	var chol mat.Cholesky
-	if !chol.Factorize(neg) {
+	// look fills the lower triangle, which is what newtonStep reads.
+	step := make([]float64, d)
+	if !newtonStep(step, c.g, c.hess) {
 		return false
 	}
-	step := mat.NewVecDense(d, nil)
-	if chol.SolveVecTo(step, mat.NewVecDense(d, append([]float64(nil), c.g...))) != nil {
-		return false
+	var size float64
+	for _, v := range step {
+		size += v * v
 	}
-	if mat.Norm(step, 2) > 1 {
+	if size > 1 {
 		return false
 	}
 	for a := range d {
-		c.y[a] = c.x[a] + step.AtVec(a)
+		c.y[a] = c.x[a] + step[a]
 	}
 	return true
 }

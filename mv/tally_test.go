@@ -191,7 +191,7 @@ func TestTallyMoments(t *testing.T) {
 	}
 }
 
-func TestCoreBoxAndTrim(t *testing.T) {
+func TestTrimStrays(t *testing.T) {
 	x, y, _ := towns(4, 4000)
 	for range 12 { // a handful of rows set at 0,0 by mistake, far away
 		x, y = append(x, 5e6), append(y, -4e6)
@@ -200,7 +200,7 @@ func TestCoreBoxAndTrim(t *testing.T) {
 	if err := ta.Add(x, y, nil); err != nil {
 		t.Fatal(err)
 	}
-	if gone := ta.Trim(ta.CoreBox()); gone != 12 || ta.Events() != 4000 || ta.Outside() != 12 {
+	if gone := ta.TrimStrays(); gone != 12 || ta.Events() != 4000 || ta.Outside() != 12 {
 		t.Errorf("trimmed %d, left %d, outside %d; want 12, 4000, 12", gone, ta.Events(), ta.Outside())
 	}
 	lo, hi := ta.Bounds()

@@ -7,18 +7,16 @@ import (
 )
 
 // CoreBox returns the rectangle that a robust extent keeps: on each axis the
-// interval that holds the central 95 % of the events, widened by twice its own
-// width on either side (and by a tile's edge at least). Events that lie further
-// out are strays: a mistaken 0,0, a slipped decimal point. The rule is common
-// practice in spirit (a fence around a central interval); its numbers are this
-// project's own.
+// interval that holds the central 95 % of the events, widened by its own width
+// on either side (and by a tile's edge at least). The rule is common practice in
+// spirit (a fence around a central interval); its numbers are this project's own.
 func (t *Tally) CoreBox() Box {
 	t.flush()
 	var b Box
 	edge := math.Ldexp(tileCells, t.level)
 	for axis := range 2 {
 		lo, hi := t.quantile(axis, 0.025), t.quantile(axis, 0.975)
-		pad := math.Max(2*(hi-lo), edge)
+		pad := math.Max(hi-lo, edge)
 		b.Min[axis], b.Max[axis] = lo-pad, hi+pad
 	}
 	return b
@@ -63,18 +61,52 @@ func (t *Tally) quantile(axis int, q float64) float64 {
 	return 0
 }
 
+// TrimStrays drops the events outside CoreBox when they are strays (a slipped
+// decimal point, a mistaken origin): at most ten or one in a hundred (and no more than one in twenty), and
+// without them the longer axis shrinks by half or more. It returns how many
+// went. Extremes that stretch the lattice little are kept.
+func (t *Tally) TrimStrays() int64 {
+	box := t.CoreBox()
+	lo, hi := t.Bounds()
+	step := t.Step()
+	longest, core := 0.0, 0.0
+	for k := range 2 {
+		from, to := float64(lo[k])*step, float64(hi[k])*step
+		longest = max(longest, to-from)
+		core = max(core, min(to, box.Max[k])-max(from, box.Min[k]))
+	}
+	if core > longest/2 {
+		return 0
+	}
+	var strays int64
+	for _, tl := range t.tiles {
+		if !t.meets(tl, box) {
+			strays += tl.events(t.level - t.grain)
+		}
+	}
+	if strays > max(10, t.events/100) || strays*20 > t.events {
+		return 0
+	}
+	return t.Trim(box)
+}
+
+// meets reports whether the tile's closed square shares a point with the box.
+func (t *Tally) meets(tl *tile, b Box) bool {
+	edge := math.Ldexp(tileCells, t.level)
+	x, y := float64(tl.key.x)*edge, float64(tl.key.y)*edge
+	return x <= b.Max[0] && x+edge >= b.Min[0] && y <= b.Max[1] && y+edge >= b.Min[1]
+}
+
 // Trim drops every tile that does not meet the box and returns how many events
 // went with them; they count as outside from then on. A tile's events go or
 // stay together, so no event is ever cut in two.
 func (t *Tally) Trim(b Box) int64 {
 	t.flush()
-	edge := math.Ldexp(tileCells, t.level)
 	kept := t.tiles[:0]
 	t.index.reset(len(t.tiles))
 	var gone int64
 	for _, tl := range t.tiles {
-		x, y := float64(tl.key.x)*edge, float64(tl.key.y)*edge
-		if x <= b.Max[0] && x+edge >= b.Min[0] && y <= b.Max[1] && y+edge >= b.Min[1] {
+		if t.meets(tl, b) {
 			t.index.insert(tl.key, len(kept))
 			kept = append(kept, tl)
 			continue

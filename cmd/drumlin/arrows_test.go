@@ -32,7 +32,7 @@ packing        = github.com/klauspost/compress, github.com/pierrec/lz4/v4
 cobra          = github.com/spf13/cobra
 viper          = github.com/spf13/viper, github.com/go-viper/mapstructure/v2, github.com/spf13/pflag
 terminal       = golang.org/x/term
-pictures       = golang.org/x/image
+drawing        = golang.org/x/image
 testscript     = github.com/rogpeppe/go-internal
 
 arrow readers  = io/parquetfile, io/arrowfile
@@ -47,9 +47,9 @@ mv, orb, simplefeatures < spatial
 std < io/events, io/record, io/internal < plain readers, arrow readers
 arrow, packing < arrow readers
 spatial, io/events, io/record, io/internal, packing < writers < io/report, io/bundle
-pictures < io/report
 spatial < io/layers < table writers
 arrow, flatbuffers < table writers
+drawing < io/report
 
 mv, bandwidth, spatial, io/events, io/record, plain readers, arrow readers, writers, table writers, io/report, io/bundle < everything
 viper < inner/config

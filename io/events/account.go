@@ -18,6 +18,7 @@ const (
 	Infinite                        // a coordinate is infinite
 	LongitudeRange                  // longitude outside [-180, 360] degrees
 	LatitudeRange                   // latitude outside [-90, 90] degrees
+	NullIsland                      // longitude and latitude both exactly 0: a failed geocoding, not a place
 	BeyondPlane                     // planar |x| or |y| above 1e8 m
 	WeightNull                      // the weight is absent
 	WeightNotFinite                 // the weight is NaN or infinite
@@ -30,7 +31,7 @@ const (
 
 var reasonNames = [reasons]string{
 	"null", "not-a-value", "not-a-number", "infinite",
-	"longitude-out-of-range", "latitude-out-of-range", "beyond-plane",
+	"longitude-out-of-range", "latitude-out-of-range", "null-island", "beyond-plane",
 	"weight-null", "weight-not-finite", "weight-negative", "zero-weight",
 	"outside-projection", "outside-study-area",
 }

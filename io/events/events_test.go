@@ -93,6 +93,7 @@ func TestScreenJudges(t *testing.T) {
 		{events.Screen{}, 360.001, 100, 0, events.LongitudeRange},
 		{events.Screen{}, -180.001, 0, 0, events.LongitudeRange},
 		{events.Screen{}, 360, 90.5, 0, events.LatitudeRange},
+		{events.Screen{}, 0, 0, 0, events.NullIsland},
 		{events.Screen{Kind: events.Planar}, 360, -1.1e8, 0, events.BeyondPlane},
 		{events.Screen{Weighted: true}, 1, 1, events.Null, events.WeightNull},
 		{events.Screen{Weighted: true}, 1, 1, events.NotAValue, events.NotANumberText},
@@ -133,7 +134,7 @@ func TestScreenAgainstSlow(t *testing.T) {
 		var want []float64
 		for i := range n {
 			x, y, w := cols[0][i], cols[1][i], cols[2][i]
-			if x >= -180 && x <= 360 && y >= -90 && y <= 90 && (!s.Weighted || w > 0 && w <= math.MaxFloat64) {
+			if x >= -180 && x <= 360 && y >= -90 && y <= 90 && !(x == 0 && y == 0) && (!s.Weighted || w > 0 && w <= math.MaxFloat64) {
 				want = append(want, float64(i))
 			}
 		}

@@ -46,17 +46,17 @@ func (s Screen) Apply(b Batch, a *Account) int {
 	if s.Weighted {
 		w = b.Columns[2]
 	}
-	x0, x1, y0, y1 := -180.0, 360.0, -90.0, 90.0
+	x0, x1, y0, y1, nowhere := -180.0, 360.0, -90.0, 90.0, 0.0
 	if s.Kind == Planar {
-		x0, x1, y0, y1 = -PlaneLimit, PlaneLimit, -PlaneLimit, PlaneLimit
+		x0, x1, y0, y1, nowhere = -PlaneLimit, PlaneLimit, -PlaneLimit, PlaneLimit, math.NaN()
 	}
 	kept := 0
 	for at := 0; at < n; {
 		run := at
 		if w == nil {
-			run += goodRun(x[at:], y[at:], x0, x1, y0, y1)
+			run += goodRun(x[at:], y[at:], x0, x1, y0, y1, nowhere)
 		} else {
-			run += goodWeightedRun(x[at:], y[at:], w[at:], x0, x1, y0, y1)
+			run += goodWeightedRun(x[at:], y[at:], w[at:], x0, x1, y0, y1, nowhere)
 		}
 		if run > at {
 			if kept != at {
@@ -81,11 +81,12 @@ func (s Screen) Apply(b Batch, a *Account) int {
 	return kept
 }
 
-// goodRun returns how many leading rows lie within the box; a NaN never does.
-func goodRun(x, y []float64, x0, x1, y0, y1 float64) int {
+// goodRun returns how many leading rows lie within the box and not at (nowhere,
+// nowhere); a NaN never lies within, nor is anything at NaN.
+func goodRun(x, y []float64, x0, x1, y0, y1, nowhere float64) int {
 	y = y[:len(x)]
 	for i, v := range x {
-		if u := y[i]; !(v >= x0 && v <= x1 && u >= y0 && u <= y1) {
+		if u := y[i]; !(v >= x0 && v <= x1 && u >= y0 && u <= y1) || v == nowhere && u == nowhere {
 			return i
 		}
 	}
@@ -93,11 +94,11 @@ func goodRun(x, y []float64, x0, x1, y0, y1 float64) int {
 }
 
 // goodWeightedRun is goodRun with weights above zero and finite.
-func goodWeightedRun(x, y, w []float64, x0, x1, y0, y1 float64) int {
+func goodWeightedRun(x, y, w []float64, x0, x1, y0, y1, nowhere float64) int {
 	y, w = y[:len(x)], w[:len(x)]
 	for i, v := range x {
 		u, m := y[i], w[i]
-		if !(v >= x0 && v <= x1 && u >= y0 && u <= y1 && m > 0 && m <= math.MaxFloat64) {
+		if !(v >= x0 && v <= x1 && u >= y0 && u <= y1 && m > 0 && m <= math.MaxFloat64) || v == nowhere && u == nowhere {
 			return i
 		}
 	}
@@ -119,6 +120,8 @@ func (s Screen) judge(x, y, w float64) Reason {
 		return LongitudeRange
 	case s.Kind == Geographic && !(y >= -90 && y <= 90):
 		return LatitudeRange
+	case s.Kind == Geographic && x == 0 && y == 0:
+		return NullIsland
 	case s.Kind == Planar && !(math.Abs(x) <= PlaneLimit && math.Abs(y) <= PlaneLimit):
 		return BeyondPlane
 	case IsNull(w):

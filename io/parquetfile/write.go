@@ -4,11 +4,14 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"maps"
+	"slices"
 	"time"
 
 	"github.com/apache/arrow/go/v17/parquet"
 	"github.com/apache/arrow/go/v17/parquet/compress"
 	"github.com/apache/arrow/go/v17/parquet/file"
+	"github.com/apache/arrow/go/v17/parquet/metadata"
 	"github.com/apache/arrow/go/v17/parquet/schema"
 )
 
@@ -59,11 +62,12 @@ func Microseconds(t []time.Time) []int64 {
 // WriteOptions says how a file is written. The zero value is the default:
 // zstd, dictionaries for text only, a million rows in a row group.
 type WriteOptions struct {
-	RowGroupRows int  // rows in a row group of Write; default 1,000,000
-	Dictionary   bool // dictionaries for numbers too
-	Uncompressed bool // no compression
-	PageV2       bool // data pages of version 2
-	PageBytes    int  // unpacked bytes of a page; default 1 MiB
+	RowGroupRows int               // rows in a row group of Write; default 1,000,000
+	Dictionary   bool              // dictionaries for numbers too
+	Uncompressed bool              // no compression
+	PageV2       bool              // data pages of version 2
+	PageBytes    int               // unpacked bytes of a page; default 1 MiB
+	Metadata     map[string]string // of the file, written in the order of the keys
 }
 
 // Writer writes a Parquet file row group by row group and holds one row group
@@ -126,7 +130,17 @@ func NewWriter(w io.Writer, columns []Column, opt WriteOptions) (*Writer, error)
 		return nil, err
 	}
 	err = noPanic(func() error {
-		out.w = file.NewParquetWriter(w, root, file.WithWriterProps(parquet.NewWriterProperties(props...)))
+		with := []file.WriteOption{file.WithWriterProps(parquet.NewWriterProperties(props...))}
+		if len(opt.Metadata) > 0 {
+			kv := metadata.NewKeyValueMetadata()
+			for _, k := range slices.Sorted(maps.Keys(opt.Metadata)) {
+				if err := kv.Append(k, opt.Metadata[k]); err != nil {
+					return err
+				}
+			}
+			with = append(with, file.WithWriteMetadata(kv))
+		}
+		out.w = file.NewParquetWriter(w, root, with...)
 		return nil
 	})
 	if err != nil {

@@ -55,6 +55,10 @@ func TestBrowser(t *testing.T) {
 	b.open(url)
 	quiet(t, b, url)
 	onePage(t, b)
+	b.eval(`document.getElementById("c-all").click()`, nil)
+	if n := len(printed(t, b)); n < 2 {
+		t.Errorf("with the evidence it prints on %d pages", n)
+	}
 	phone(t, b)
 	b.call("Emulation.setScriptExecutionDisabled", map[string]any{"value": true}, nil)
 	b.open(url)
@@ -136,7 +140,7 @@ func pointer(t *testing.T, b *browser) {
 		return {X: r.x + r.width / 2, Y: r.y + r.height / 2};
 	})()`, &at)
 	b.call("Input.dispatchMouseEvent", map[string]any{"type": "mouseMoved", "x": at.X, "y": at.Y}, nil)
-	got := reading(b)
+	got := strings.ReplaceAll(reading(b), "\u00a0", " ")
 	peak := coarse().Peaks()[0]
 	place, _, _ := strings.Cut(got, ":")
 	var lat, lon float64
@@ -248,19 +252,32 @@ func policyHolds(t *testing.T, b *browser) {
 // onePage prints on one sheet of A4.
 func onePage(t *testing.T, b *browser) {
 	t.Helper()
+	if n := len(printed(t, b)); n != 1 {
+		t.Errorf("prints on %d pages", n)
+	}
+}
+
+// printed returns the places of the pages in the PDF.
+func printed(t *testing.T, b *browser) (at []int) {
+	t.Helper()
 	var pdf struct{ Data string }
 	b.call("Page.printToPDF", map[string]any{"printBackground": false, "preferCSSPageSize": true}, &pdf)
 	raw, err := base64.StdEncoding.DecodeString(pdf.Data)
 	if err != nil {
 		t.Fatal(err)
 	}
-	if n := bytes.Count(raw, []byte("/Type /Page\n")); n != 1 {
-		t.Errorf("prints on %d pages", n)
-	}
 	if dir := os.Getenv("DRUMLIN_SHOTS"); dir != "" {
 		if err := os.WriteFile(filepath.Join(dir, "print.pdf"), raw, 0o666); err != nil {
 			t.Fatal(err)
 		}
+	}
+	for i := 0; ; i++ {
+		n := bytes.Index(raw[i:], []byte("/Type /Page\n"))
+		if n < 0 {
+			return at
+		}
+		i += n
+		at = append(at, i)
 	}
 }
 

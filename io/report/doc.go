@@ -27,7 +27,7 @@
 //	thinning of rings          O(v log v) usual, v vertices
 //	graticule                  64 projected positions a line
 //	page                       O(v); about 2 to 4 bytes a kept coordinate
-//	picture                    O(pixels · levels)
+//	picture                    O(pixels · bands)
 //
 // Sources: Douglas and Peucker 1973, Cartographica 10, 112-122 (thinning);
 // Ottosson 2020, "A perceptual color space for image processing" (OKLab);

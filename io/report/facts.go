@@ -66,7 +66,7 @@ func facts(p *Page) []factGroup {
 		{"peaks kept back", data("run/guard/peaks_withheld", fmt.Sprint(g.Peaks), fmt.Sprint(g.Peaks))},
 	}
 	pr := rec.Program
-	versions := []fact{{pr.Name, text(strings.TrimSpace(pr.Version + " " + pr.Commit))}, {"Go", text(pr.Go)}}
+	versions := []fact{{shown(pr.Name), text(strings.TrimSpace(pr.Version + " " + pr.Commit))}, {"Go", text(pr.Go)}}
 	for _, d := range pr.Dependencies {
 		versions = append(versions, fact{shown(d.Module), text(d.Version)})
 	}

@@ -204,7 +204,7 @@ func (l *gridLine) place(f *frame) {
 
 func gridLabel(v, step float64, ew, placeless bool) string {
 	if placeless {
-		return significant(v, 6) + " m"
+		return level6(v) + nb + "m"
 	}
 	decimals := 0
 	if step < 1 {

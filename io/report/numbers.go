@@ -13,6 +13,9 @@ import (
 	"drumlin/spatial"
 )
 
+// nb keeps a number and its unit on one line.
+const nb = "\u00a0"
+
 // significant prints v with so many significant digits, without an exponent,
 // thousands apart, with a true minus sign.
 func significant(v float64, digits int) string {
@@ -71,19 +74,19 @@ func count(n float64) string { return thousands(strconv.FormatFloat(math.Round(n
 func areaText(km2 float64) string {
 	switch {
 	case km2 >= 0.1 || km2 == 0:
-		return significant(km2, 3) + " km²"
+		return significant(km2, 3) + nb + "km²"
 	case km2 >= 0.001:
-		return significant(km2*100, 3) + " ha"
+		return significant(km2*100, 3) + nb + "ha"
 	}
-	return significant(km2*1e6, 3) + " m²"
+	return significant(km2*1e6, 3) + nb + "m²"
 }
 
 // lengthText prints a length given in metres.
 func lengthText(m float64) string {
 	if m >= 1000 {
-		return significant(m/1000, 3) + " km"
+		return significant(m/1000, 3) + nb + "km"
 	}
-	return significant(m, 3) + " m"
+	return significant(m, 3) + nb + "m"
 }
 
 // areaUnit is the area that intensities are shown for.
@@ -116,9 +119,9 @@ func unitFor(highest float64) areaUnit {
 // degreesText prints one coordinate, 7 to 0 decimals.
 func degreesText(v float64, decimals int, positive, negative string) string {
 	s := strconv.FormatFloat(math.Abs(v), 'f', decimals, 64)
-	hemisphere := " " + positive
+	hemisphere := nb + positive
 	if v < 0 {
-		hemisphere = " " + negative
+		hemisphere = nb + negative
 	}
 	if f, _ := strconv.ParseFloat(s, 64); f == 0 {
 		hemisphere = ""
@@ -141,10 +144,10 @@ func placeDecimals(step float64) int {
 }
 
 // shareText prints a share as per cent.
-func shareText(v float64) string { return strconv.FormatFloat(100*v, 'f', 1, 64) + " %" }
+func shareText(v float64) string { return strconv.FormatFloat(100*v, 'f', 1, 64) + nb + "%" }
 
 // contentText names a region: 50 %, 99.9 %.
-func contentText(c float64) string { return perCent(c) + " %" }
+func contentText(c float64) string { return perCent(c) + nb + "%" }
 
 func perCent(c float64) string {
 	return strconv.FormatFloat(math.Round(c*1e8)/1e6, 'f', -1, 64)

@@ -64,7 +64,7 @@ func WritePNG(w io.Writer, p Page, opt PNGOptions) error {
 	d.drawLegend(&p, mapHeight)
 	d.text(picLeft, 36, 25, true, d.ink, shown(p.title()), left)
 	d.text(picLeft, 63, 15, false, d.quiet, pictureLine(&p), left)
-	return (&png.Encoder{CompressionLevel: png.BestCompression}).Encode(w, d.img)
+	return png.Encode(w, d.img)
 }
 
 // pictureLine is the second line of the title: what was counted and how it was
@@ -92,14 +92,13 @@ func (d *painter) drawMap(s *scene, mapHeight float64) {
 		return out
 	}
 	d.rect(picLeft, picTop, picMap, mapHeight, d.land)
-	context := lines(s.context)
-	d.stroke(context, false, 1.2, d.quiet, nil)
 	for i, rings := range s.bands {
 		d.fill(lines(rings), bandColour(i, len(s.bands), d.dark))
 	}
-	faint := d.quiet
-	faint.A = 110
-	d.stroke(context, false, 1, faint, nil)
+	context, edge, dark := lines(s.context), d.halo, d.ink
+	edge.A, dark.A = 140, 190
+	d.stroke(context, false, 2.2, edge, nil)
+	d.stroke(context, false, 0.9, dark, nil)
 	grid := d.grid
 	grid.A = 165
 	for _, l := range s.grid {

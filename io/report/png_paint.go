@@ -21,7 +21,7 @@ type painter struct {
 	palette
 	inDisc color.NRGBA // ground of a numbered disc
 	dark   bool
-	img    *image.NRGBA
+	img    *image.RGBA
 	scale  float64 // pixels a unit
 	ras    *vector.Rasterizer
 	fonts  [2]*opentype.Font // regular, bold
@@ -50,7 +50,7 @@ func newPainter(width int, height float64, c palette, dark bool) (*painter, erro
 		}
 		d.fonts[i] = f
 	}
-	d.img = image.NewNRGBA(image.Rect(0, 0, width, int(math.Ceil(height*scale))))
+	d.img = image.NewRGBA(image.Rect(0, 0, width, int(math.Ceil(height*scale))))
 	draw.Draw(d.img, d.img.Bounds(), image.NewUniform(c.page), image.Point{}, draw.Src)
 	d.ras = vector.NewRasterizer(1, 1)
 	return d, nil

@@ -186,5 +186,12 @@ func distance(a, b point) float64 { return math.Hypot(float64(a.x-b.x), float64(
 // barFor chooses a round length of about a fifth of the map.
 func barFor(f *frame) scaleBar {
 	length := roundStep(float64(f.w)*f.unit/4, false)
-	return scaleBar{units: int(math.Round(length / f.unit)), text: lengthText(length), half: lengthText(length / 2)}
+	return scaleBar{units: int(math.Round(length / f.unit)), text: barText(length), half: barText(length / 2)}
+}
+
+func barText(m float64) string {
+	if m >= 1000 {
+		return level(m/1000) + nb + "km"
+	}
+	return level(m) + nb + "m"
 }

@@ -42,20 +42,15 @@ func mapSVG(p *Page, s *scene, u areaUnit) template.HTML {
 	}
 	m.f(">\n<defs><clipPath id=\"inside\"><rect width=\"%d\" height=\"%d\"/></clipPath></defs>\n", w, h)
 	m.f("<g aria-hidden=\"true\" clip-path=\"url(#inside)\">\n<rect class=\"ground\" width=\"%d\" height=\"%d\"/>\n", w, h)
-	if len(s.context) > 0 {
-		m.raw("<g class=\"l-context\">")
-		m.path("context", s.context, false, "")
-		m.raw("</g>\n")
-	}
 	m.raw("<g class=\"l-bands\" id=\"bands\">\n")
 	for i, rings := range s.bands {
 		m.path("b"+strconv.Itoa(i), rings, true, ` data-text="`+html.EscapeString(bandText(p, i, u))+`"`)
 	}
 	m.raw("</g>\n")
 	if len(s.context) > 0 {
-		m.raw("<g class=\"l-context\">")
-		m.path("context faint", s.context, false, "")
-		m.raw("</g>\n")
+		m.raw("<defs>")
+		m.path("plain", s.context, false, ` id="context"`)
+		m.raw("</defs>\n<g class=\"l-context\"><use class=\"context edge\" href=\"#context\"/><use class=\"context\" href=\"#context\"/></g>\n")
 	}
 	m.graticule(s)
 	if len(s.study) > 0 {
@@ -157,15 +152,15 @@ func extent(e ellipse) (x, y float64) {
 // strip draws the scale bar, north and the kernel's ellipse below the map.
 func (m *markup) strip(s *scene) {
 	mid := s.f.h + stripHeight(s)/2
-	x, y := 24, mid-4
+	x, y := 24, s.f.h+44
 	m.f("<g class=\"strip\" aria-hidden=\"true\">\n<path class=\"barline\" d=\"M%d %dv24h%dv-24M%d %dv-24\"/><path class=\"barfill\" d=\"M%d %dh%dv-12h%dz\"/>\n",
 		x, y, s.bar.units, x+s.bar.units/2, y+24, x, y+24, s.bar.units/2, -s.bar.units/2)
-	m.f(`<text class="striptext" x="%d" y="%d">0</text>`, x, y+84)
-	m.f(`<text class="striptext mid half" x="%d" y="%d">%s</text>`, x+s.bar.units/2, y+84, html.EscapeString(s.bar.half))
-	m.f(`<text class="striptext mid" x="%d" y="%d">%s</text>`+"\n", x+s.bar.units, y+84, html.EscapeString(s.bar.text))
+	m.f(`<text class="striptext" x="%d" y="%d">0</text>`, x, y+86)
+	m.f(`<text class="striptext mid half" x="%d" y="%d">%s</text>`, x+s.bar.units/2, y+86, html.EscapeString(s.bar.half))
+	m.f(`<text class="striptext mid" x="%d" y="%d">%s</text>`+"\n", x+s.bar.units, y+86, html.EscapeString(s.bar.text))
 	if s.hasNorth {
-		m.f(`<g transform="translate(%d %d) rotate(%.1f)"><path class="north" d="M0-84L28 20 0 0-28 20z"/></g><text class="striptext mid" x="%d" y="%d">N</text>`+"\n",
-			s.f.w/2-40, mid+14, s.north, s.f.w/2-40, mid+92)
+		m.f(`<g transform="translate(%d %d) rotate(%.1f)"><path class="north" d="M0-84L28 20 0 0-28 20z"/></g><text class="striptext" x="%d" y="%d">N</text>`+"\n",
+			s.f.w/2-40, mid+10, s.north, s.f.w/2+10, mid+10)
 	}
 	if !s.spread.on {
 		e := s.spread
@@ -174,7 +169,7 @@ func (m *markup) strip(s *scene) {
 		m.raw("<g class=\"l-spread\">")
 		m.ellipse(e)
 		m.f(`<text class="striptext end" x="%d" y="%d">one event’s</text><text class="striptext end" x="%d" y="%d">spread (1 scale)</text></g>`+"\n",
-			e.at.x-int(half)-40, mid-8, e.at.x-int(half)-40, mid+52)
+			e.at.x-int(half)-40, mid-24, e.at.x-int(half)-40, mid+50)
 	}
 	m.raw("</g>\n")
 }

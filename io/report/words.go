@@ -89,7 +89,7 @@ func regionWords(p *Page, i int, r spatial.Region) []any {
 		data(id+"/area_km2", same(r.AreaKM2), areaText(r.AreaKM2)), ": the ", template.HTML("<b>" + contentText(r.Content) + " region</b>")}
 	widest := p.Release.Regions()[len(p.Release.Regions())-1]
 	if r.AreaKM2 < widest.AreaKM2 {
-		parts = append(parts, ", ", significant(100*r.AreaKM2/widest.AreaKM2, 2), " % of the ", contentText(widest.Content), " region’s ground")
+		parts = append(parts, ", ", significant(100*r.AreaKM2/widest.AreaKM2, 2), nb+"% of the ", contentText(widest.Content), " region’s ground")
 	}
 	return append(parts, ".")
 }
@@ -122,19 +122,19 @@ func errorWords(peaks []spatial.Peak) []any {
 	}
 	parts := []any{}
 	if len(peaks) == 1 {
-		parts = append(parts, "It is the only peak shown; one standard error is ", significant(100*lo, 2), " % of it")
+		parts = append(parts, "It is the only peak shown; one standard error is ", significant(100*lo, 2), nb+"% of it")
 	} else {
-		parts = append(parts, fmt.Sprintf("%d peaks are shown; one standard error is ", len(peaks)), significant(100*lo, 2), " % of the surest and ", significant(100*hi, 2), " % of the least sure")
+		parts = append(parts, fmt.Sprintf("%d peaks are shown; one standard error is ", len(peaks)), significant(100*lo, 2), nb+"% of the surest and ", significant(100*hi, 2), nb+"% of the least sure")
 	}
 	if most > 0 {
-		parts = append(parts, ". Smoothing lowers peaks by up to ", significant(100*most, 2), " %, more where they are sharp")
+		parts = append(parts, ". Smoothing lowers peaks by up to ", significant(100*most, 2), nb+"%, more where they are sharp")
 	}
 	return append(parts, ".")
 }
 
 func bandwidthOrigin(method string) template.HTML {
 	switch method {
-	case "plug-in":
+	case "auto", "plug-in":
 		return "That amount was chosen from the events to make the estimated error least."
 	case "normal-reference":
 		return "That amount is the reference for a single bell-shaped cluster; with several clusters it smooths too much."
@@ -181,7 +181,7 @@ func factorText(c float64) string {
 	case c < 1 && 1/c == math.Round(1/c):
 		return fmt.Sprintf("H/%.0f", 1/c)
 	}
-	return level(c) + " H"
+	return level(c) + nb + "H"
 }
 
 func withheldWords(w spatial.Withheld) (int, string) {

@@ -16,6 +16,7 @@ import (
 	"strconv"
 	"strings"
 	"syscall"
+	"time"
 
 	"github.com/spf13/cobra"
 	"golang.org/x/term"
@@ -39,12 +40,6 @@ codes, data-protection law and licensed practice come before this program.
 
 // Main runs the program and returns its exit status.
 func Main(args []string, stdout, stderr io.Writer) (status int) {
-	defer func() {
-		if p := recover(); p != nil {
-			fmt.Fprintf(stderr, "drumlin: a fault of the program: %v\n%s", p, debug.Stack())
-			status = exitFault
-		}
-	}()
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
 	defer stop()
 	app := &app{stdout: stdout, stderr: stderr}
@@ -52,9 +47,14 @@ func Main(args []string, stdout, stderr io.Writer) (status int) {
 	root.SetArgs(args)
 	root.SetOut(stdout)
 	root.SetErr(stderr)
-	err := root.ExecuteContext(ctx)
+	err := run(ctx, root.ExecuteContext)
 	if err == nil {
 		return exitDone
+	}
+	var panicked fault
+	if errors.As(err, &panicked) {
+		fmt.Fprintln(stderr, "drumlin: "+panicked.Error())
+		return exitFault
 	}
 	status = exitStatus(err)
 	app.json = app.json || wantsJSON(args)
@@ -73,6 +73,40 @@ func wantsJSON(args []string) bool {
 	}
 	return slices.Contains(args, "--json") || slices.Contains(args, "--json=true")
 }
+
+// grace is how long an interrupted run may take to end by itself; what it was
+// writing takes itself away as soon as the context is cancelled.
+const grace = 2 * time.Second
+
+// run executes the command and, once interrupted, does not wait longer than
+// the grace for a long computation to notice.
+func run(ctx context.Context, execute func(context.Context) error) error {
+	done := make(chan error, 1)
+	go func() {
+		defer func() {
+			if p := recover(); p != nil {
+				done <- fault{fmt.Sprintf("%v\n%s", p, debug.Stack())}
+			}
+		}()
+		done <- execute(ctx)
+	}()
+	select {
+	case err := <-done:
+		return err
+	case <-ctx.Done():
+	}
+	select {
+	case err := <-done:
+		return err
+	case <-time.After(grace):
+		return ctx.Err()
+	}
+}
+
+// fault is a panic of the program, with its stack.
+type fault struct{ text string }
+
+func (f fault) Error() string { return "a fault of the program: " + f.text }
 
 // app carries what commands share.
 type app struct {
@@ -112,7 +146,7 @@ amount by which smoothing lowers them.`,
 		return fmt.Errorf("%w: %w; see drumlin %s --help", errUsage, err, c.Name())
 	})
 	root.SetHelpTemplate(root.HelpTemplate() + exitHelp)
-	root.AddCommand(a.mapCommand(), a.demoCommand(), a.versionCommand())
+	root.AddCommand(a.mapCommand(), a.bandwidthCommand(), a.evaluateCommand(), a.demoCommand(), a.versionCommand())
 	for _, c := range root.Commands() {
 		c.Args = usageArgs(c.Args)
 	}

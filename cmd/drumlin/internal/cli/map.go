@@ -25,6 +25,7 @@ func (a *app) mapCommand() *cobra.Command {
   contours.geojson  bands of intensity, events per km2
   peaks.geojson     where intensity is highest, with error and smoothing bias
   surface.tif       the intensity on a lattice (GeoTIFF)
+  report.html       one page for planners and reviewers
   run.json          what was run, on what, and how it was decided
 
 An input is a Parquet or CSV file, a folder of them, or a quoted glob; the format
@@ -84,7 +85,7 @@ func (a *app) printJSON(res *pipeline.Result, out string) error {
 func printFiles(w io.Writer, s *config.Settings) {
 	for _, f := range s.Formats {
 		if f == "geojson" {
-			fmt.Fprintf(w, "\nOpen %s in a GIS; the record of this run is %s.\n", filepath.Join(s.Out, "regions.geojson"), filepath.Join(s.Out, "run.json"))
+			fmt.Fprintf(w, "\nOpen %s in a browser, %s in a GIS; the record of this run is %s.\n", filepath.Join(s.Out, "report.html"), filepath.Join(s.Out, "regions.geojson"), filepath.Join(s.Out, "run.json"))
 			return
 		}
 	}

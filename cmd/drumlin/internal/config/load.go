@@ -25,7 +25,7 @@ func MapFlags(f *pflag.FlagSet) {
 	f.String("crs", "", "CRS of the coordinates: EPSG:n, or plane for metres without a place; default: degrees if the names say so")
 	f.String("work-crs", "auto", "plane of the estimate: auto (equal-area, centred on the events) or EPSG:n")
 	f.String("weight", "", "column of weights, above 0")
-	f.String("bandwidth", "plug-in", "how the bandwidth matrix is chosen: plug-in, normal-reference")
+	f.String("bandwidth", BandwidthNames[0], "how the bandwidth matrix is chosen: "+strings.Join(BandwidthNames, ", "))
 	f.String("shape", "full", "form of the bandwidth matrix: full, diagonal, scalar")
 	f.String("matrix", "", "a fixed bandwidth matrix h11,h12,h22 in square metres")
 	f.Float64("scale", 0, "a fixed bandwidth of scale h in metres, the same in all directions")
@@ -35,9 +35,10 @@ func MapFlags(f *pflag.FlagSet) {
 	f.String("content", "50,75,95", "contents of the highest density regions, per cent")
 	f.String("bands", "8", "how many isobands, or their levels in events per km2")
 	f.String("band-content", "", "isobands by content instead: per cents such as 25,50,75,90, whose regions' borders are their edges")
-	f.String("lattice", "auto", "nodes along the longer axis: auto (1024, up to 4096 until the minor scale spans 4 steps) or a number")
+	f.String("lattice", "auto", "nodes along the longer axis: auto (1024, up to 4096 until the minor scale spans 4 steps) or about a number (steps are powers of two)")
 	f.String("region-rule", "events", "what a region's content counts: events (events not yet seen) or mass (of the estimate)")
 	f.Float64("min-events", 10, "least events that a released part, hole or peak rests on")
+	f.String("context", "", "GeoJSON lines or polygons drawn beneath the map in the report (coast, districts); never used in the estimate")
 	f.Bool("sensitivity", true, "regions at H/2 and 2H in the report and the record")
 	f.String("png", "", "file for the map as a picture; must not exist, unless --replace")
 	f.Int("workers", 0, "goroutines that work; 0: all CPUs")
@@ -51,6 +52,16 @@ func MapFlags(f *pflag.FlagSet) {
 // Load reads the settings from flags, environment and the file (none if "").
 // An unknown key in the file is an error, as is a value of the wrong kind.
 func Load(flags *pflag.FlagSet, file string, inputs []string) (*Settings, error) {
+	var s Settings
+	if err := loadInto(&s, flags, file, inputs); err != nil {
+		return nil, err
+	}
+	return &s, nil
+}
+
+// loadInto reads the settings of any command into a struct with the names of
+// its flags.
+func loadInto(into any, flags *pflag.FlagSet, file string, inputs []string) error {
 	v := viper.New()
 	v.SetEnvPrefix(EnvPrefix)
 	v.SetEnvKeyReplacer(strings.NewReplacer("-", "_"))
@@ -65,15 +76,15 @@ func Load(flags *pflag.FlagSet, file string, inputs []string) (*Settings, error)
 		bindErr = errors.Join(bindErr, v.BindPFlag(f.Name, f))
 	})
 	if bindErr != nil {
-		return nil, bindErr
+		return bindErr
 	}
 	if file != "" {
 		v.SetConfigFile(file)
 		if err := v.ReadInConfig(); err != nil {
 			if errors.Is(err, fs.ErrNotExist) {
-				return nil, fmt.Errorf("%w: settings file %s does not exist", ErrSettings, file)
+				return fmt.Errorf("%w: settings file %s does not exist", ErrSettings, file)
 			}
-			return nil, fmt.Errorf("%w: settings file %s: %s", ErrSettings, file, strings.Join(strings.Fields(err.Error()), " "))
+			return fmt.Errorf("%w: settings file %s: %s", ErrSettings, file, strings.Join(strings.Fields(err.Error()), " "))
 		}
 		var unknown []string
 		for _, k := range v.AllKeys() {
@@ -82,18 +93,17 @@ func Load(flags *pflag.FlagSet, file string, inputs []string) (*Settings, error)
 			}
 		}
 		if sort.Strings(unknown); len(unknown) > 0 {
-			return nil, fmt.Errorf("%w: settings file %s: unknown key %s; the keys are the names of the flags", ErrSettings, file, strings.Join(unknown, ", "))
+			return fmt.Errorf("%w: settings file %s: unknown key %s; the keys are the names of the flags", ErrSettings, file, strings.Join(unknown, ", "))
 		}
 	}
 	if len(inputs) > 0 {
 		v.Set("inputs", inputs)
 	}
-	var s Settings
-	err := v.UnmarshalExact(&s, viper.DecodeHook(mapstructure.ComposeDecodeHookFunc(splitList)))
+	err := v.UnmarshalExact(into, viper.DecodeHook(mapstructure.ComposeDecodeHookFunc(splitList)))
 	if err != nil {
-		return nil, fmt.Errorf("%w: %s", ErrSettings, strings.Join(strings.Fields(err.Error()), " "))
+		return fmt.Errorf("%w: %s", ErrSettings, strings.Join(strings.Fields(err.Error()), " "))
 	}
-	return &s, nil
+	return nil
 }
 
 // splitList turns "50,75,95", or a single number, into a list where a list is wanted.

@@ -39,7 +39,8 @@ type Settings struct {
 	RegionRule string  `mapstructure:"region-rule"`
 	MinEvents  float64 `mapstructure:"min-events"`
 
-	Sensitivity bool `mapstructure:"sensitivity"` // regions at H/2 and 2H too
+	Context     string `mapstructure:"context"`     // lines drawn beneath the map, none if ""
+	Sensitivity bool   `mapstructure:"sensitivity"` // regions at H/2 and 2H too
 
 	PNG     string   `mapstructure:"png"` // picture to write, none if ""
 	Workers int      `mapstructure:"workers"`
@@ -91,7 +92,7 @@ func (s *Settings) Validate() error {
 	if (s.X == "") != (s.Y == "") {
 		bad("only one of x and y is given; name both columns")
 	}
-	oneOf("bandwidth", s.Bandwidth, "plug-in", "normal-reference")
+	oneOf("bandwidth", s.Bandwidth, BandwidthNames...)
 	oneOf("shape", s.Shape, "full", "diagonal", "scalar")
 	oneOf("region-rule", s.RegionRule, "events", "mass")
 	oneOf("edge", s.Edge, "renormalise", "conserve", "none")

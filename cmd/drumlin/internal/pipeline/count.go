@@ -74,31 +74,84 @@ func (w *pool) each(ctx context.Context, sources []events.Source, columns []stri
 	return first
 }
 
-// countCentre is the first pass over coordinates that finds the centre; the
-// account says what became of the rows.
-func (r *reading) countCentre(ctx context.Context, sources []events.Source, w *pool) (*spatial.CentreCounter, events.Account, error) {
+// extent is the least and greatest raw value of the x and y columns, rows that
+// will be set aside among them and NaN not, as a file's statistics have it.
+type extent struct{ lo, hi [2]float64 }
+
+func noExtent() extent {
+	inf := math.Inf(1)
+	return extent{[2]float64{inf, inf}, [2]float64{-inf, -inf}}
+}
+
+func (e *extent) add(axis int, lo, hi float64) {
+	e.lo[axis], e.hi[axis] = min(e.lo[axis], lo), max(e.hi[axis], hi)
+}
+
+// stated is the extent from the files' own statistics, false where one lacks them.
+func (r *reading) stated(sources []events.Source) (extent, bool) {
+	e := noExtent()
+	for _, src := range sources {
+		for axis, c := range []string{r.x, r.y} {
+			lo, hi, ok := src.Bounds(c)
+			if !ok {
+				return e, false
+			}
+			e.add(axis, lo, hi)
+		}
+	}
+	return e, true
+}
+
+// firstLook is what a first pass over the coordinates finds.
+type firstLook struct {
+	counter spatial.CentreCounter
+	account events.Account
+	extent  extent
+}
+
+// look is the first pass over coordinates: for the centre where it is wanted,
+// and for the extent.
+func (r *reading) look(ctx context.Context, sources []events.Source, w *pool, centre bool) (*firstLook, error) {
 	w.report.Stage("finding the centre")
-	counters := make([]spatial.CentreCounter, max(1, w.workers))
-	accounts := make([]events.Account, len(counters))
+	looks := make([]firstLook, max(1, w.workers))
+	for i := range looks {
+		looks[i].extent = noExtent()
+	}
 	screen := r.screen()
 	screen.Weighted = false
 	err := w.each(ctx, sources, []string{r.x, r.y}, func(worker, _ int, b events.Batch) error {
-		n := screen.Apply(b, &accounts[worker])
+		l := &looks[worker]
+		for axis := range 2 {
+			for _, v := range b.Columns[axis] {
+				if v == v {
+					l.extent.add(axis, v, v)
+				}
+			}
+		}
+		n := screen.Apply(b, &l.account)
+		if !centre {
+			return nil
+		}
 		p := spatial.LonLats{Lon: b.Columns[0][:n], Lat: b.Columns[1][:n]}
 		if r.reproject || !r.input.Geographic {
 			p = r.input.Projection.Inverse(spatial.XYs{X: p.Lon, Y: p.Lat})
 		}
-		counters[worker].Add(p)
+		l.counter.Add(p)
 		return nil
 	})
 	if err != nil {
-		return nil, events.Account{}, err
+		return nil, err
 	}
-	for i := range counters[1:] {
-		counters[0].Merge(&counters[i+1])
-		accounts[0].Add(accounts[i+1])
+	out := &looks[0]
+	for i := range looks[1:] {
+		l := &looks[i+1]
+		out.counter.Merge(&l.counter)
+		out.account.Add(l.account)
+		for axis := range 2 {
+			out.extent.add(axis, l.extent.lo[axis], l.extent.hi[axis])
+		}
 	}
-	return &counters[0], accounts[0], nil
+	return out, nil
 }
 
 // tallied is the outcome of a pass over the events.

@@ -23,19 +23,18 @@ const (
 
 // Selection says how the bandwidth matrix is found.
 type Selection struct {
-	Method string // "plug-in", "normal-reference", "fixed"
+	Method string // one of bandwidth.Methods, or "fixed"
 	Shape  bandwidth.Shape
 	Fixed  mv.BandwidthMatrix // for "fixed"
+	Sample *mv.Sample         // for "likelihood-cv"
 }
 
 func (s Selection) choose(e bandwidth.Events) (bandwidth.Choice, error) {
-	switch s.Method {
-	case "plug-in":
-		return bandwidth.PlugIn(e, s.Shape, 0)
-	case "normal-reference":
-		return bandwidth.NormalReference(e, s.Shape)
+	if s.Method == "fixed" {
+		return bandwidth.Choice{Method: "fixed", Shape: s.Shape, Matrix: s.Fixed, Notes: []string{"given, not chosen from the events"}}, nil
 	}
-	return bandwidth.Choice{Method: "fixed", Shape: s.Shape, Matrix: s.Fixed, Notes: []string{"given, not chosen from the events"}}, nil
+	e.Sample = s.Sample
+	return bandwidth.Select(e, s.Method, bandwidth.Options{Shape: s.Shape})
 }
 
 // Estimate is the density with its errors on one lattice, and how it came about.
@@ -301,11 +300,6 @@ func (m *estimator) at(lo, hi [2]int64, base, level, fine int, margin [2]float64
 	if err != nil {
 		return nil, nil, err
 	}
-	if e.Choice, err = m.sel.choose(bandwidth.Events{Spectrum: spectrum, Covariance: cov}); err != nil {
-		return nil, nil, err
-	}
-	e.StepsPerScale = e.Choice.Matrix.Ellipse().Minor / math.Ldexp(1, level)
-	e.LatticeError = binningError(e.StepsPerScale*math.Ldexp(1, level-fine), n)
 	if fine == level {
 		e.Counts = nodes
 		if weighted {
@@ -317,7 +311,19 @@ func (m *estimator) at(lo, hi [2]int64, base, level, fine int, margin [2]float64
 			e.Weights, err = m.grid(lo, hi, base, level, margin, true)
 		}
 	}
-	return e, spectrum, err
+	if err != nil {
+		return nil, nil, err
+	}
+	at := e.Counts
+	if weighted {
+		at = e.Weights
+	}
+	if e.Choice, err = m.sel.choose(bandwidth.Events{Spectrum: spectrum, Covariance: cov, Counts: at}); err != nil {
+		return nil, nil, err
+	}
+	e.StepsPerScale = e.Choice.Matrix.Ellipse().Minor / math.Ldexp(1, level)
+	e.LatticeError = binningError(e.StepsPerScale*math.Ldexp(1, level-fine), n)
+	return e, spectrum, nil
 }
 
 // floor widens a matrix that the lattice cannot show: below stepsFloor steps

@@ -95,18 +95,23 @@ func estimated(t *testing.T, name string, flags map[string]string) (e *Estimate,
 // TestDensityAgainstDirectSums compares the density on the lattice with one
 // kernel an event, summed: at nodes drawn over the whole lattice, at those
 // nearest to the events and at the highest one. The tolerance, 1e-4 of the
-// greatest density, is what a map of eight or a hundred bands cannot show.
+// greatest density, is what a map of eight or a hundred bands cannot show. The
+// geyser's 272 eruptions have one axis ten times as long as the other, so that
+// the finest lattice has 6 steps per minor scale: 5e-4.
 func TestDensityAgainstDirectSums(t *testing.T) {
-	const tolerance = 1e-4
+	if testing.Short() {
+		t.Skip("direct sums are left out with -short")
+	}
 	for _, c := range []struct {
-		name  string
-		flags map[string]string
+		name      string
+		tolerance float64
+		flags     map[string]string
 	}{
-		{"fiji-quakes.parquet", map[string]string{"x": "long", "y": "lat", "crs": "EPSG:4326"}},
-		{"us-airports.parquet", nil},
-		{"us-airports.parquet", map[string]string{"shape": "diagonal"}},
-		{"us-airports.parquet", map[string]string{"work-crs": "EPSG:5070"}},
-		{"faithful.csv", map[string]string{"x": "eruptions", "y": "waiting", "crs": "plane", "bandwidth": "normal-reference"}},
+		{"fiji-quakes.parquet", 1e-4, map[string]string{"x": "long", "y": "lat", "crs": "EPSG:4326"}},
+		{"us-airports.parquet", 1e-4, nil},
+		{"us-airports.parquet", 1e-4, map[string]string{"shape": "diagonal"}},
+		{"us-airports.parquet", 1e-4, map[string]string{"work-crs": "EPSG:5070"}},
+		{"faithful.csv", 5e-4, map[string]string{"x": "eruptions", "y": "waiting", "crs": "plane", "bandwidth": "normal-reference"}},
 	} {
 		e, x, y := estimated(t, c.name, c.flags)
 		if float64(len(x)) != e.Events {
@@ -146,7 +151,7 @@ func TestDensityAgainstDirectSums(t *testing.T) {
 			worst = max(worst, math.Abs(g.Values[n]-want[i]))
 		}
 		t.Logf("%s %v: worst error %.2g of the maximum at %d nodes; expected %.2g; %.3g steps per minor scale", c.name, c.flags, worst/top, len(nodes), e.LatticeError, e.StepsPerScale)
-		if worst > tolerance*top {
+		if worst > c.tolerance*top {
 			t.Errorf("%s %v: worst error %g of the maximum", c.name, c.flags, worst/top)
 		}
 

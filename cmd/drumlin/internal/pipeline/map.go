@@ -13,6 +13,7 @@ import (
 	"slices"
 	"time"
 
+	"drumlin/bandwidth"
 	"drumlin/cmd/drumlin/internal/config"
 	"drumlin/cmd/drumlin/internal/progress"
 	"drumlin/io/events"
@@ -77,6 +78,9 @@ func (r *run) timed(name string, f func() error) error {
 }
 
 func (r *run) do(ctx context.Context) (*Result, error) {
+	if err := r.checkPicture(); err != nil {
+		return nil, err
+	}
 	target, err := r.openTarget(ctx)
 	if err != nil {
 		return nil, err
@@ -113,6 +117,10 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 	if err != nil {
 		return nil, err
 	}
+	orientation, err := contextLines(r.settings.Context, in.plane)
+	if err != nil {
+		return nil, err
+	}
 
 	var counted *tallied
 	var est *Estimate
@@ -125,7 +133,7 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 			return nil, fmt.Errorf("%w: %s", ErrNoEvents, reasonsText(counted.account))
 		}
 		if in.area == nil {
-			counted.tally.Trim(counted.tally.CoreBox())
+			counted.tally.TrimStrays()
 		}
 		if counted.account.Read > 0 && pass == 1 {
 			r.report.Expect(0)
@@ -133,6 +141,11 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 		sel, err := r.selection()
 		if err != nil {
 			return nil, err
+		}
+		if sel.Method == "likelihood-cv" {
+			if sel.Sample, err = in.drawSample(ctx, r.sources, w, occupiedBox(counted.tally), bandwidth.SubSample); err != nil {
+				return nil, err
+			}
 		}
 		m := &estimator{tally: counted.tally, sel: sel, nodes: r.settings.Nodes(), workers: r.workers, canRepeat: pass < mostPasses, progress: r.report.Stage}
 		if in.area != nil {
@@ -175,7 +188,7 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 	rec := r.record(in, counted, est, release, inputs)
 	rec.Zones = zoned
 	rec.Guard.ClosePairs = closePairs(release)
-	page := report.Page{Record: rec, Release: release, Projection: in.plane, Choices: choices(est)}
+	page := report.Page{Record: rec, Release: release, Projection: in.plane, Context: orientation, Choices: choices(est)}
 	if r.settings.Sensitivity {
 		err := r.timed("sensitivity", func() (err error) {
 			r.report.Stage("regions at H/2 and 2H")
@@ -205,14 +218,8 @@ func (r *run) tallyOptions(in *reading) mv.TallyOptions {
 		return opt
 	}
 	extent := 0.0
-	for _, src := range r.sources {
-		for _, c := range []string{in.x, in.y} {
-			lo, hi, ok := src.Bounds(c)
-			if !ok {
-				return opt
-			}
-			extent = max(extent, math.Abs(lo), math.Abs(hi))
-		}
+	for axis := range 2 {
+		extent = max(extent, math.Abs(in.extent.lo[axis]), math.Abs(in.extent.hi[axis]))
 	}
 	for extent > 0 && opt.Grain > -24 && math.Ldexp(extent, -opt.Grain) < 1<<24 {
 		opt.Grain--

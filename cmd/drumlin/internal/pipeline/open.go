@@ -10,6 +10,7 @@ import (
 	"slices"
 	"strings"
 
+	"drumlin/io/arrowfile"
 	"drumlin/io/csvfile"
 	"drumlin/io/events"
 	"drumlin/io/parquetfile"
@@ -128,11 +129,13 @@ func openOne(path string) (events.Source, error) {
 			return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "named .parquet but holds text", Remedy: "give the file its right ending, or the right file"}
 		}
 		return csvfile.Open(path)
+	case events.FormatArrowFile, events.FormatArrowStream:
+		return arrowfile.Open(path, arrowfile.Options{})
 	case events.FormatEmpty:
 		return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "the file is empty", Remedy: "check how it was made"}
 	case events.FormatUnknown:
-		return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "the content is neither Parquet nor text with columns", Remedy: "give a Parquet or CSV file"}
+		return nil, &events.Fault{Kind: events.ErrMalformed, File: path, What: "the content is neither Parquet, Arrow nor text with columns", Remedy: "give a Parquet, Arrow or CSV file"}
 	default:
-		return nil, &events.Fault{Kind: events.ErrUnsupported, File: path, What: fmt.Sprintf("the content is %s, which is not read yet", format), Remedy: "give a Parquet or CSV file"}
+		return nil, &events.Fault{Kind: events.ErrUnsupported, File: path, What: fmt.Sprintf("the content is %s, which is not read yet", format), Remedy: "give a Parquet, Arrow or CSV file"}
 	}
 }

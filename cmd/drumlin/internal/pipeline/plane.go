@@ -4,7 +4,6 @@ import (
 	"context"
 	"errors"
 	"fmt"
-	"math"
 
 	"drumlin/cmd/drumlin/internal/config"
 	"drumlin/io/events"
@@ -18,6 +17,7 @@ type reading struct {
 	inputName    string
 	plane        spatial.Projection // of the estimate
 	reproject    bool               // input is projected, but not on the plane of the estimate
+	extent       extent             // of the raw coordinates; known for a plane without a place
 	warnings     []string
 	area         *areaFile // nil without a study area
 }
@@ -118,6 +118,15 @@ func (r *reading) choosePlane(ctx context.Context, s *config.Settings, sources [
 			return fmt.Errorf("%w: work-crs %s does not go with coordinates without a place (--crs plane)", config.ErrSettings, s.WorkCRS)
 		}
 		r.plane = r.input.Projection
+		var ok bool
+		if r.extent, ok = r.stated(sources); ok {
+			return nil
+		}
+		l, err := r.look(ctx, sources, w, false)
+		if err != nil {
+			return err
+		}
+		r.extent = l.extent
 		return nil
 	}
 	if s.WorkCRS != "auto" {
@@ -148,37 +157,37 @@ func (r *reading) choosePlane(ctx context.Context, s *config.Settings, sources [
 	return nil
 }
 
-// centre comes from the files' column statistics where they are narrow, else
-// from a first pass over the coordinates.
+// centre comes from the extent of the coordinates where that is narrow, else
+// from a first pass over them. Whether the extent is that of the files'
+// statistics or, where one lacks them, that of a first pass makes no difference.
 func (r *reading) centre(ctx context.Context, sources []events.Source, w *pool) (spatial.LonLat, error) {
 	if r.area != nil {
 		return spatial.AreaCentre(r.area.shape), nil
 	}
-	if r.input.Geographic {
-		lonMin, lonMax, latMin, latMax := math.Inf(1), math.Inf(-1), math.Inf(1), math.Inf(-1)
-		all := true
-		for _, src := range sources {
-			x0, x1, okX := src.Bounds(r.x)
-			y0, y1, okY := src.Bounds(r.y)
-			if all = all && okX && okY; !all {
-				break
-			}
-			lonMin, lonMax = min(lonMin, x0), max(lonMax, x1)
-			latMin, latMax = min(latMin, y0), max(latMax, y1)
+	choose := func(e extent) (spatial.LonLat, bool) {
+		if !r.input.Geographic {
+			return spatial.LonLat{}, false
 		}
-		if all {
-			if c, ok := spatial.ChooseCentre(lonMin, lonMax, latMin, latMax); ok {
-				return c, nil
-			}
+		return spatial.ChooseCentre(e.lo[0], e.hi[0], e.lo[1], e.hi[1])
+	}
+	e, stated := r.stated(sources)
+	if stated {
+		if c, ok := choose(e); ok {
+			return c, nil
 		}
 	}
-	counter, account, err := r.countCentre(ctx, sources, w)
+	l, err := r.look(ctx, sources, w, true)
 	if err != nil {
 		return spatial.LonLat{}, err
 	}
-	c, ok := counter.Centre()
+	if !stated {
+		if c, ok := choose(l.extent); ok {
+			return c, nil
+		}
+	}
+	c, ok := l.counter.Centre()
 	if !ok {
-		return c, fmt.Errorf("%w: %s", ErrNoEvents, reasonsText(account))
+		return c, fmt.Errorf("%w: %s", ErrNoEvents, reasonsText(l.account))
 	}
 	return c, nil
 }

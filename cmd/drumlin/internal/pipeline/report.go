@@ -8,6 +8,7 @@ import (
 	"fmt"
 	"hash"
 	"io"
+	"os"
 
 	"drumlin/io/bundle"
 	"drumlin/io/record"
@@ -55,6 +56,18 @@ func (r *run) writeReport(b *bundle.Bundle, page report.Page) (picture []byte, e
 	var buf bytes.Buffer
 	err = report.WritePNG(&buf, page, report.PNGOptions{})
 	return buf.Bytes(), err
+}
+
+// checkPicture refuses a picture that could not be written in the end, before
+// the work.
+func (r *run) checkPicture() error {
+	if r.settings.PNG == "" || r.settings.Replace {
+		return nil
+	}
+	if _, err := os.Lstat(r.settings.PNG); err == nil {
+		return fmt.Errorf("%s exists; name another picture or say --replace: %w", r.settings.PNG, bundle.ErrExists)
+	}
+	return nil
 }
 
 // writePicture writes what writeReport drew.

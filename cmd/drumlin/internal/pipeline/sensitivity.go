@@ -98,8 +98,8 @@ func choices(e *Estimate) []report.Choice {
 			Method: c.Method, Shape: c.Shape.String(), Major: ell.Major, Minor: ell.Minor, Bearing: ell.Bearing,
 			Criterion: c.Criterion, Status: c.Status.String(), Evaluations: c.Evaluations, Used: i == 0, Notes: c.Notes,
 		}
-		if used.Method == "plug-in" {
-			if bias, variance, ok := errorAt(used, c.Matrix, e.EffectiveN); ok {
+		if len(used.Pilots) > 0 {
+			if bias, variance, ok := errorAt(used, c.Matrix); ok {
 				q.SquaredBias, q.Variance = bias, variance
 				q.EstimatedErrorRatio = (bias + variance) / (used.Bias2 + used.Variance)
 			}
@@ -116,7 +116,7 @@ func choices(e *Estimate) []report.Choice {
 // matrix h, from the functionals psi of order 4 that the plug-in selector
 // estimated last: a quarter of vec(H)' Psi vec(H), and R(K)/(n sqrt det H).
 // Source: Wand and Jones 1995, section 4.3.
-func errorAt(used bandwidth.Choice, h mv.BandwidthMatrix, n float64) (bias, variance float64, ok bool) {
+func errorAt(used bandwidth.Choice, h mv.BandwidthMatrix) (bias, variance float64, ok bool) {
 	if len(used.Pilots) == 0 {
 		return 0, 0, false
 	}

@@ -142,6 +142,9 @@ func (r *run) recordedSettings(in *reading) record.Settings {
 	if s.Scale != 0 {
 		out = append(out, record.Setting{Name: "scale", Value: s.Scale})
 	}
+	if s.Context != "" {
+		out = append(out, record.Setting{Name: "context", Value: filepath.Base(s.Context)})
+	}
 	return append(out, record.Settings{
 		{Name: "content", Value: slices.Sorted(slices.Values(s.Content))}, {Name: "bands", Value: s.Bands}, {Name: "band-content", Value: slices.Sorted(slices.Values(s.BandContent))}, {Name: "lattice", Value: s.Lattice},
 		{Name: "study-area", Value: baseName(s.StudyArea)}, {Name: "edge", Value: s.Edge}, {Name: "zones", Value: baseName(s.Zones)},
@@ -162,8 +165,10 @@ func bandwidthRecord(e *Estimate) record.Bandwidth {
 	if c.Method == "fixed" {
 		b.Status = "fixed"
 	}
-	if c.Method == "plug-in" {
+	if c.Method != "fixed" && c.Status != bandwidth.Closed {
 		b.Criterion = &c.Criterion
+	}
+	if c.Bias2 > 0 {
 		b.AMISE = &record.AMISE{SquaredBias: c.Bias2, Variance: c.Variance}
 	}
 	for i, p := range c.Pilots {
