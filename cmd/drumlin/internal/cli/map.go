@@ -24,6 +24,7 @@ func (a *app) mapCommand() *cobra.Command {
   regions.geojson   the smallest regions that hold stated shares of events
   contours.geojson  bands of intensity, events per km2
   peaks.geojson     where intensity is highest, with error and smoothing bias
+  zones.geojson     with --zones: expected and recorded events of named polygons
   surface.tif       the intensity on a lattice (GeoTIFF)
   report.html       one page for planners and reviewers
   run.json          what was run, on what, and how it was decided
@@ -32,6 +33,8 @@ An input is a Parquet or CSV file, a folder of them, or a quoted glob; the forma
 is told from the content. Several inputs make one set of events.`,
 		Example: `  drumlin map callouts.parquet --out map
   drumlin map 2025.csv 2026.csv --x easting --y northing --crs EPSG:3035 --out map
+  drumlin map callouts.parquet --study-area island.geojson --zones wards.geojson --out map
+  drumlin map callouts.parquet --formats geoparquet,flatgeobuf,geotiff --out map
   DRUMLIN_MIN_EVENTS=20 drumlin map callouts.parquet --content 50,90 --out map`,
 		Args: cobra.ArbitraryArgs,
 		RunE: func(c *cobra.Command, args []string) error {
