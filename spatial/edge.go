@@ -140,7 +140,7 @@ func (w *StudyArea) KernelMass(l mv.Lattice, workers int, hs ...mv.BandwidthMatr
 	return out, nil
 }
 
-// Near returns which nodes lie within reach nodes of the mask's support.
+// near returns which nodes lie within reach nodes of the mask's support.
 func near(mask mv.Grid, reach int) []bool {
 	nx, ny := mask.N[0], mask.N[1]
 	across := make([]bool, nx*ny)

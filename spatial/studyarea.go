@@ -49,7 +49,7 @@ func NewStudyArea(shape orb.MultiPolygon, proj Projection) (*StudyArea, error) {
 	}
 	for i, p := range shape {
 		if err := geomPolygon(p).Validate(); err != nil {
-			return nil, fmt.Errorf("spatial: polygon %d is not valid: %s: %w", i+1, plainFault(err), ErrStudyArea)
+			return nil, fmt.Errorf("spatial: polygon %d is not valid: %s: %w", i+1, err, ErrStudyArea)
 		}
 	}
 	w := &StudyArea{}
@@ -78,9 +78,6 @@ func NewStudyArea(shape orb.MultiPolygon, proj Projection) (*StudyArea, error) {
 	}
 	return w, w.finish(flat)
 }
-
-// plainFault drops capitals that the judge of validity begins with.
-func plainFault(err error) string { return err.Error() }
 
 func geomRing(r orb.Ring) geom.LineString {
 	xy := make([]float64, 0, 2*len(r))
@@ -223,7 +220,7 @@ func (w *StudyArea) unite(flat MultiPolygon) (MultiPolygon, error) {
 		parts[i] = planeGeom(p)
 	}
 	if err := geom.NewMultiPolygon(parts).Validate(); err != nil {
-		return nil, fmt.Errorf("spatial: not valid on the plane: %s: %w", plainFault(err), ErrStudyArea)
+		return nil, fmt.Errorf("spatial: not valid on the plane: %s: %w", err, ErrStudyArea)
 	}
 	return flat, nil
 }

@@ -63,7 +63,6 @@ func TestZones(t *testing.T) {
 		}
 		a.BandLevels = []float64{1e-8}
 		ids := []string{"a", "b", "c", "d"}
-		// zones reach 100 m beyond the study area, and overlap by as much inside it
 		tiles := [4][2]float64{{0, 0}, {2000, 0}, {0, 2000}, {2000, 2000}}
 		for k, at := range tiles {
 			z := areaOf(t, [][]float64{{at[0], at[1], at[0] + 2000, at[1], at[0] + 2000, at[1] + 2000, at[0], at[1] + 2000}})

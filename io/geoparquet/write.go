@@ -53,7 +53,7 @@ func write(w io.Writer, l *layers.Layer) error {
 func layerColumns(l *layers.Layer) ([]*column, schema.FieldList, error) {
 	var cols []*column
 	var fields schema.FieldList
-	add := func(n schema.Node, err error) *column {
+	add := func(n schema.Node) *column {
 		c := &column{node: n}
 		fields = append(fields, n)
 		cols = append(cols, c)
@@ -63,8 +63,8 @@ func layerColumns(l *layers.Layer) ([]*column, schema.FieldList, error) {
 	if err != nil {
 		return nil, nil, err
 	}
-	id := add(str, nil)
-	geometry := add(schema.NewByteArrayNode("geometry", parquet.Repetitions.Required, -1), nil)
+	id := add(str)
+	geometry := add(schema.NewByteArrayNode("geometry", parquet.Repetitions.Required, -1))
 	box := [4]*column{{}, {}, {}, {}}
 	var parts schema.FieldList
 	for _, name := range []string{"xmin", "ymin", "xmax", "ymax"} {
@@ -89,7 +89,7 @@ func layerColumns(l *layers.Layer) ([]*column, schema.FieldList, error) {
 		default:
 			n = schema.NewInt64Node(f.Name, parquet.Repetitions.Optional, -1)
 		}
-		rest = append(rest, add(n, nil))
+		rest = append(rest, add(n))
 	}
 	for _, f := range l.Features {
 		b, err := wkb.Marshal(f.Shape)

@@ -24,6 +24,7 @@ func (a *app) mapCommand() *cobra.Command {
   regions.geojson   the smallest regions that hold stated shares of events
   contours.geojson  bands of intensity, events per km2
   peaks.geojson     where intensity is highest, with error and smoothing bias
+  zones.geojson     with --zones: expected and recorded events of named polygons
   surface.tif       the intensity on a lattice (GeoTIFF)
   report.html       one page for planners and reviewers
   run.json          what was run, on what, and how it was decided
@@ -36,6 +37,8 @@ set of events.`,
   drumlin map 2025.csv 2026.csv --x easting --y northing --crs EPSG:3035 --out map
   drumlin map calls/ --where "kind = 'fire' AND year >= 2024" --out fires
   drumlin map calls.csv.gz --time received --from 2025-01-01 --until 2026-01-01 --zone Europe/Oslo --out map
+  drumlin map callouts.parquet --study-area island.geojson --zones wards.geojson --out map
+  drumlin map callouts.parquet --formats geoparquet,flatgeobuf,geotiff --out map
   DRUMLIN_MIN_EVENTS=20 drumlin map callouts.parquet --content 50,90 --out map`,
 		Args: cobra.ArbitraryArgs,
 		RunE: func(c *cobra.Command, args []string) error {

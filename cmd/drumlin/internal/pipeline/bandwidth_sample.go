@@ -29,6 +29,9 @@ func (r *reading) drawSample(ctx context.Context, sources []events.Source, w *po
 			weights = b.Columns[2][:n]
 		}
 		p := r.project(b.Columns[0][:n], b.Columns[1][:n])
+		if r.area != nil {
+			p.X, p.Y, weights = r.area.drop(p.X, p.Y, weights, &accounts[worker])
+		}
 		for i, x := range p.X {
 			if y := p.Y[i]; x >= box.Min[0] && x <= box.Max[0] && y >= box.Min[1] && y <= box.Max[1] {
 				k := kept{hash: positionHash(x, y), x: x, y: y, w: 1}
