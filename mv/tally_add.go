@@ -5,17 +5,22 @@ import (
 	"math"
 )
 
-// bufferSize is how many events wait in a tile's buffer until they go to its
-// nodes together. The tile (34 kB) then stays in the processor's cache while
-// they are added, where single events would miss cache and page tables at
-// nearly every one.
-const bufferSize = 128
+// A tile's events wait in a buffer until they go to its nodes together. The tile
+// (34 kB) then stays in the processor's cache while they are added, where single
+// events would miss cache and page tables at nearly every one. mostWaiting
+// events, a few for each of the tile's nodes' lines, were fastest; with large
+// budgets the buffers are shorter, so that all of them hold allWaiting at most.
+const (
+	mostWaiting = 2048
+	allWaiting  = 1 << 20
+)
 
 const recentBits = 6 // edge of the table of recent tiles: 64 by 64
 
 // queue holds events that have a tile but are not yet at their nodes.
 type queue struct {
-	local  []uint64 // bufferSize per tile: grains from the tile's corner, y in the high word, x in the low
+	size   int      // events that a tile's buffer holds
+	local  []uint64 // size per tile: grains from the tile's corner, y in the high word, x in the low
 	w      []uint64 // their integer weights, nil without weights
 	count  []int32  // events waiting, per tile
 	recent [1 << (2 * recentBits)]tileSlot
@@ -34,7 +39,7 @@ func (t *Tally) Add(x, y, w []float64) error {
 		t.chooseLevel(x, y)
 	}
 	if t.queue == nil {
-		t.queue = &queue{}
+		t.queue = &queue{size: min(mostWaiting, max(64, allWaiting/t.budget))}
 	}
 	q := t.queue
 	scale := math.Ldexp(1, -t.grain)
@@ -65,7 +70,7 @@ func (t *Tally) Add(x, y, w []float64) error {
 			*slot = tileSlot{key, int32(pos) + 1}
 		}
 		k := int(slot.pos) - 1
-		at := k*bufferSize + int(q.count[k])
+		at := k*q.size + int(q.count[k])
 		if w != nil {
 			if !(w[i] >= 0 && w[i] <= maxWeight) {
 				return fmt.Errorf("mv: tally: weight %g of event %d is not between 0 and %g: %w", w[i], i, float64(maxWeight), ErrNotFinite)
@@ -74,7 +79,7 @@ func (t *Tally) Add(x, y, w []float64) error {
 		}
 		q.local[at] = uint64(iy&mask)<<32 | uint64(ix&mask)
 		t.events++
-		if q.count[k]++; q.count[k] == bufferSize {
+		if q.count[k]++; int(q.count[k]) == q.size {
 			t.settle(k)
 		}
 	}
@@ -94,9 +99,9 @@ func (t *Tally) find(key tileKey) int {
 	}
 	for q := t.queue; len(q.count) <= pos; {
 		q.count = append(q.count, 0)
-		q.local = append(q.local, make([]uint64, bufferSize)...)
+		q.local = append(q.local, make([]uint64, q.size)...)
 		if t.weighted {
-			q.w = append(q.w, make([]uint64, bufferSize)...)
+			q.w = append(q.w, make([]uint64, q.size)...)
 		}
 	}
 	return pos
@@ -141,7 +146,7 @@ func (t *Tally) settle(k int) {
 		t.normalise()
 	}
 	t.pending += quanta
-	from, to := k*bufferSize, k*bufferSize+n
+	from, to := k*q.size, k*q.size+n
 	if t.weighted {
 		t.tiles[k].addWeights(q.local[from:to], q.w[from:to], shift)
 	}

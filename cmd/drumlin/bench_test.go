@@ -23,7 +23,8 @@ import (
 	"drumlin/io/record"
 )
 
-// BenchmarkMapAgainstBareScan runs the whole program on a generated extract and
+// BenchmarkMapAgainstBareScan runs the whole program, with plug-in selection and
+// every default output, on a generated extract and
 // a bare scan of the same two columns by the same reader, side by side, and
 // prints the ratio. DRUMLIN_BENCH_ROWS sets the rows (default 2 million; the
 // claims are made at 100 million). Coordinates are metres with two decimals, as
@@ -49,7 +50,7 @@ func BenchmarkMapAgainstBareScan(b *testing.B) {
 	for b.Loop() {
 		scan += bareScan(b, input, int64(rows))
 		out := filepath.Join(dir, "map")
-		cmd := exec.Command(program, "map", input, "--crs", "plane", "--out", out, "--quiet")
+		cmd := exec.Command(program, "map", input, "--crs", "plane", "--bandwidth", "plug-in", "--out", out, "--quiet")
 		from := time.Now()
 		if text, err := cmd.CombinedOutput(); err != nil {
 			b.Fatalf("map: %v\n%s", err, text)
