@@ -29,10 +29,19 @@ type Page struct {
 	Files        []record.File // the bundle's files with digests; default: the record's
 }
 
-// Period is when the events happened, half-open.
+// Period is when the events happened.
 type Period struct {
 	From, Until string // as the record writes them
+	Through     bool   // Until is the time of the last event, not the end of a window
 	Zone        string // time zone
+}
+
+// to joins the two ends.
+func (p *Period) to() string {
+	if p.Through {
+		return " to "
+	}
+	return " until before "
 }
 
 // Alternative is what the map would show at Factor times H.

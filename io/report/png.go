@@ -73,7 +73,7 @@ func pictureLine(p *Page) string {
 	b := p.Record.Bandwidth
 	line := count(float64(p.Record.Rows.Used)) + " recorded events"
 	if p.Period != nil {
-		line += ", " + shown(p.Period.From) + " until before " + shown(p.Period.Until)
+		line += ", " + shown(p.Period.From) + p.Period.to() + shown(p.Period.Until)
 	}
 	return line + fmt.Sprintf("; each spread over %s along bearing %.0f° and %s across (%s, %s)", lengthText(b.Major), b.Bearing, lengthText(b.Minor), shown(b.Method), shown(b.Shape))
 }

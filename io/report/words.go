@@ -66,7 +66,7 @@ func periodText(p *Page) template.HTML {
 	if p.Period == nil {
 		return "When they happened is not known to this map."
 	}
-	s := "They happened from " + foreign(p.Period.From) + " until before " + foreign(p.Period.Until)
+	s := "They happened from " + foreign(p.Period.From) + template.HTML(p.Period.to()) + foreign(p.Period.Until)
 	if p.Period.Zone != "" {
 		s += " (" + foreign(p.Period.Zone) + ")"
 	}

@@ -187,7 +187,10 @@ func (r *run) do(ctx context.Context) (*Result, error) {
 	rec := r.record(in, counted, est, release, inputs)
 	rec.Zones = zoned
 	rec.Guard.ClosePairs = closePairs(release)
-	page := report.Page{Record: rec, Release: release, Projection: in.plane, Context: orientation, Choices: choices(est)}
+	page := report.Page{Record: rec, Release: release, Projection: in.plane, Context: orientation, Choices: choices(est), Period: pagePeriod(rec)}
+	if in.area != nil {
+		page.StudyArea = in.area.plane.Plane()
+	}
 	if r.settings.Sensitivity {
 		err := r.timed("sensitivity", func() (err error) {
 			r.report.Stage("regions at H/2 and 2H")
@@ -238,8 +241,8 @@ func (r *run) warnEstimate(e *Estimate, c *tallied) {
 	if out := c.tally.Outside(); out > 0 {
 		warn("%s events lie far outside the rest and were left out of the map", progress.Count(out))
 	}
-	elsewhere := c.account.SetAside[events.OutsideStudyArea] // asked for
-	if share := float64(c.account.SetAsideTotal()-elsewhere) / float64(c.account.Read); share > 0.2 {
+	asked := c.account.SetAside[events.OutsideStudyArea] + c.account.SetAside[events.Filtered] + c.account.SetAside[events.OutsideTimeWindow]
+	if share := float64(c.account.SetAsideTotal()-asked) / float64(c.account.Read-asked); share > 0.2 {
 		warn("%.0f %% of the rows were set aside: %s", 100*share, reasonsText(c.account))
 	}
 }

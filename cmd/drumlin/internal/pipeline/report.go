@@ -58,6 +58,23 @@ func (r *run) writeReport(b *bundle.Bundle, page report.Page) (picture []byte, e
 	return buf.Bytes(), err
 }
 
+// pagePeriod is the period as the page words it: the window asked for where it
+// was given, else from the first to the last event.
+func pagePeriod(rec *record.Record) *report.Period {
+	p := rec.Period
+	if p == nil {
+		return nil
+	}
+	out := &report.Period{From: p.From, Until: p.Until, Zone: p.Zone}
+	if out.From == "" {
+		out.From = p.First
+	}
+	if out.Until == "" {
+		out.Until, out.Through = p.Last, true
+	}
+	return out
+}
+
 // checkPicture refuses a picture that could not be written in the end, before
 // the work.
 func (r *run) checkPicture() error {
