@@ -13,8 +13,9 @@ const (
 	temper       = 0.15 // power of a mixture's weight exp(-BIC/2) in the average
 	plugInNeeds  = 0.5  // standard errors by which plug-in must beat the mixtures
 	lscvNeeds    = 2.5  // and a minimiser of the yardstick itself
-	tieTrust     = 0.25 // share of the tie limit above which cross-validation judges nothing
+	tieTrust     = 0.7  // share of the tie limit above which cross-validation judges nothing
 	partOfPlugIn = 1.0 / 8
+	fewEvents    = 40 // below this no mixture is fitted and cross-validation not asked
 )
 
 // Auto chooses a matrix by estimated risk, in three steps.
@@ -33,9 +34,9 @@ const (
 //
 // The standard error is that of twice the mean, over the events, of the
 // difference of the two leave-one-out densities. Notes say which step decided.
-// Past a quarter of the tie limit cross-validation and mixtures would see
+// Past seven tenths of the tie limit cross-validation and mixtures would see
 // repeated positions as sharp peaks: three-stage plug-in is taken, and a note
-// says so. Without node counts and sample likewise.
+// says so. Without node counts and sample, or below 40 events, likewise.
 //
 // Criterion is the averaged mean integrated squared error, or the criterion of
 // the selector that decided. Pilots, Variance and Bias2 are three-stage
@@ -67,6 +68,9 @@ func Auto(e Events, opt Options) (Choice, error) {
 	}
 	if e.Counts.Values == nil && e.Sample == nil {
 		return auto(plug, "three-stage plug-in: neither node counts nor events were at hand for mixtures")
+	}
+	if e.n() < fewEvents {
+		return auto(plug, fmt.Sprintf("three-stage plug-in: fewer than %d events are too few to fit mixtures to", fewEvents))
 	}
 	if ties := CountTies(e); ties.Ratio > tieTrust*ties.Limit {
 		return auto(plug, fmt.Sprintf("three-stage plug-in, which repeated positions mislead least: %s", ties))
@@ -157,7 +161,10 @@ func mixtureChoice(e Events, plug Choice, opt Options) (Choice, string, error) {
 	}
 	co := coords{d, opt.Shape}
 	var from [][]float64
-	for _, c := range crits {
+	for i, c := range crits {
+		if used[i] < 0.1 {
+			continue
+		}
 		best, err := f.descendFrom(e, opt.Shape, c, f.startsAt(plug.Matrix, co), 1, 0)
 		if err != nil {
 			continue

@@ -14,8 +14,8 @@ const stepFloor = 1.5
 
 // LeastSquaresCV minimises LSCV from several starts around the normal reference
 // and the plug-in matrix. Past the tie limit (TieLimit) the criterion falls
-// without end as H shrinks; the plug-in matrix is returned then, and a note
-// says why. Variance and Bias2 are not separated: Criterion is that of LSCV,
+// without end as H shrinks, and it may fall to the lattice's own scale before;
+// the plug-in matrix is returned then: Method says so, and a note why. Variance and Bias2 are not separated: Criterion is that of LSCV,
 // MISE - R(f) in expectation.
 func LeastSquaresCV(e Events, opt Options) (Choice, error) {
 	if err := errors.Join(e.check(), opt.check()); err != nil {
@@ -24,12 +24,18 @@ func LeastSquaresCV(e Events, opt Options) (Choice, error) {
 	ties := CountTies(e)
 	if ties.PastLimit() {
 		c, err := PlugInBy(e, opt)
-		c.Notes = append(c.Notes, fmt.Sprintf("least-squares cross-validation was asked: %s; it has no minimum on such data, and the plug-in matrix was taken instead", ties))
+		c.Notes = append([]string{fmt.Sprintf("least-squares cross-validation was asked: %s; it has no minimum on such data, and the plug-in matrix was taken instead", ties)}, c.Notes...)
 		return c, err
 	}
 	c, err := searchAround(e, opt, "lscv", LSCV(e.Sums()))
 	if err == nil && c.Status == Border {
-		c.Notes = append(c.Notes, fmt.Sprintf("the criterion falls down to the least scale that was searched (%s): repeated or rounded coordinates, or a lattice too coarse; do not use this matrix", ties))
+		evaluated, stopped := c.Evaluations, c.Matrix.Eigenvalues()
+		c, err = PlugInBy(e, opt)
+		c.Evaluations += evaluated
+		if e.Spectrum != nil {
+			c.Unresolved = math.Sqrt(stopped[len(stopped)-1])
+		}
+		c.Notes = append([]string{fmt.Sprintf("least-squares cross-validation was asked: its criterion falls down to the least scale that was searched (%s); the plug-in matrix was taken instead", ties)}, c.Notes...)
 	}
 	return c, err
 }
@@ -101,13 +107,10 @@ func searchAround(e Events, opt Options, method string, f Criterion) (Choice, er
 		from = append(from, co.from(multiple(pi, k)))
 	}
 	from = append(from, co.from(nr))
-	high := 0.0
-	if method == "bcv" {
-		high = 4 * nr.Eigenvalues()[0]
-	}
-	descents := 3
+	high, descents := 0.0, 2
 	if method == "bcv" { // the lowest start lies on the slope to infinity
-		descents = 0
+		high, descents = 4*nr.Eigenvalues()[0], 0
+		from = [][]float64{co.from(multiple(pi, 0.1)), co.from(multiple(pi, 0.4)), co.from(pi), co.from(multiple(nr, 0.5))}
 	}
 	c, err := fr.descendFrom(e, opt.Shape, f, from, descents, high)
 	if err != nil {

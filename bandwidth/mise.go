@@ -20,14 +20,14 @@ func ExactMISE(m *mv.NormalMixture, n float64) Criterion {
 	type pair struct {
 		w    float64
 		diff []float64
-		cov  mv.BandwidthMatrix
+		cov  []float64
 	}
 	var pairs []pair
 	for k := range m.Len() {
 		wk, mk, sk := m.Component(k)
 		for l := range k + 1 {
 			wl, ml, sl := m.Component(l)
-			p := pair{w: 2 * wk * wl, diff: make([]float64, d), cov: sum(sk, 1, sl, 1)}
+			p := pair{w: 2 * wk * wl, diff: make([]float64, d), cov: sum(sk, 1, sl, 1).Entries()}
 			if l == k {
 				p.w = wk * wk
 			}
@@ -42,14 +42,17 @@ func ExactMISE(m *mv.NormalMixture, n float64) Criterion {
 	return func(h mv.BandwidthMatrix) (float64, []float64) {
 		variance := gaussR(d) / (n * h.SqrtDet())
 		value := variance + rough
-		grad := make([]float64, d*d)
+		grad, s, g := make([]float64, d*d), make([]float64, d*d), make([]float64, d*d)
 		for ij := range grad {
 			grad[ij] = -0.5 * variance * h.InvAt(ij/d, ij%d)
 		}
 		for _, p := range pairs {
 			for _, ac := range [2][2]float64{{1, -2}, {2, 1 - 1/n}} {
 				a, c := ac[0], ac[1]
-				v, g := normalAndSlope(sum(h, a, p.cov, 1), p.diff)
+				for ij := range s {
+					s[ij] = a*h.At(ij/d, ij%d) + p.cov[ij]
+				}
+				v := normalAndSlope(d, s, p.diff, g)
 				value += c * p.w * v
 				for ij := range grad {
 					grad[ij] += 0.5 * a * c * p.w * g[ij]
@@ -60,22 +63,33 @@ func ExactMISE(m *mv.NormalMixture, n float64) Criterion {
 	}
 }
 
-// normalAndSlope returns phi_S(x) and its second derivatives,
-// phi_S(x) (P x x' P - P), P = S^-1.
-func normalAndSlope(s mv.BandwidthMatrix, x []float64) (float64, []float64) {
-	d := s.Dim()
+// normalAndSlope writes the second derivatives phi_S(x) (P x x' P - P), P = S^-1,
+// into g and returns phi_S(x).
+func normalAndSlope(d int, s, x, g []float64) float64 {
+	if d == 2 {
+		det := s[0]*s[3] - s[1]*s[2]
+		p, q, r := s[3]/det, -s[1]/det, s[0]/det
+		u, w := p*x[0]+q*x[1], q*x[0]+r*x[1]
+		v := math.Exp(-0.5*(u*x[0]+w*x[1])) / (2 * math.Pi * math.Sqrt(det))
+		g[0], g[1], g[2], g[3] = v*(u*u-p), v*(u*w-q), v*(u*w-q), v*(w*w-r)
+		return v
+	}
+	m, err := mv.NewBandwidthMatrix(d, s)
+	if err != nil {
+		clear(g)
+		return 0
+	}
 	z := make([]float64, d)
 	for i := range d {
 		for j := range d {
-			z[i] += s.InvAt(i, j) * x[j]
+			z[i] += m.InvAt(i, j) * x[j]
 		}
 	}
-	v := kernelAtZero(s) * math.Exp(-0.5*s.Mahalanobis2(x))
-	g := make([]float64, d*d)
+	v := kernelAtZero(m) * math.Exp(-0.5*m.Mahalanobis2(x))
 	for ij := range g {
-		g[ij] = v * (z[ij/d]*z[ij%d] - s.InvAt(ij/d, ij%d))
+		g[ij] = v * (z[ij/d]*z[ij%d] - m.InvAt(ij/d, ij%d))
 	}
-	return v, g
+	return v
 }
 
 // OptimalMatrix minimises ExactMISE from fixed starts, the covariance of the

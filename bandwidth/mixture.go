@@ -43,7 +43,7 @@ func FitMixtures(e Events, least float64) (*Mixtures, error) {
 func fitMixtures(e Events, least float64) (*Mixtures, error) {
 	d, n, unit := e.dim(), e.n(), e.scale()
 	f := &mixtureFit{d: d, n: n, least: max(1e-6, least/(unit*unit))}
-	mean := make([]float64, d)
+	var mean []float64
 	switch {
 	case e.Counts.Values != nil:
 		m, _, err := e.Counts.Moments(n)
@@ -135,6 +135,10 @@ func (f *mixtureFit) bic(m fitted) float64 {
 // grow returns the best mixture with one component more.
 func (f *mixtureFit) grow(m fitted) (fitted, bool) {
 	best, found := fitted{logL: math.Inf(-1)}, false
+	logs, err := f.logDensities(m)
+	if err != nil {
+		return best, false
+	}
 	for i, p := range m.parts {
 		if p.w*f.n < 2*leastPerPart {
 			continue
@@ -163,16 +167,17 @@ func (f *mixtureFit) grow(m fitted) (fitted, bool) {
 		scaleAll(a.cov, 0.1)
 		scaleAll(b.cov, 1.3)
 		trials = append(trials, [2]part{a, b})
+		rest := logSumWithout(logs, i)
 		for _, t := range trials {
-			next := fitted{}
-			for j, q := range m.parts {
-				if j != i {
-					next.parts = append(next.parts, q.copied(q.w))
+			pair := fitted{parts: t[:]}
+			if f.improveAmong(&pair, trialIterations, rest, p.w) == nil && pair.logL > best.logL {
+				best, found = fitted{logL: pair.logL}, true
+				for j, q := range m.parts {
+					if j != i {
+						best.parts = append(best.parts, q.copied(q.w))
+					}
 				}
-			}
-			next.parts = append(next.parts, t[0].copied(t[0].w), t[1].copied(t[1].w))
-			if f.improve(&next, trialIterations) == nil && next.logL > best.logL {
-				best, found = next, true
+				best.parts = append(best.parts, pair.parts...)
 			}
 		}
 	}
@@ -186,8 +191,71 @@ func (p part) copied(w float64) part {
 	return part{w, append([]float64(nil), p.mean...), append([]float64(nil), p.cov...)}
 }
 
+// logDensities returns the logarithm of each weighted component at every cell.
+func (f *mixtureFit) logDensities(m fitted) ([][]float64, error) {
+	d := f.d
+	out := make([][]float64, len(m.parts))
+	z := make([]float64, d)
+	for i, p := range m.parts {
+		h, err := mv.NewBandwidthMatrix(d, p.cov)
+		if err != nil {
+			return nil, err
+		}
+		inv := invLower(h)
+		logW := math.Log(p.w) - 0.5*(float64(d)*math.Log(2*math.Pi)+h.LogDet())
+		out[i] = make([]float64, len(f.cells))
+		for c := range f.cells {
+			out[i][c] = logW - 0.5*distance2(d, inv, z, f.cells[c].mean, p.mean)
+		}
+	}
+	return out, nil
+}
+
+// logSumWithout returns the logarithm of the sum over all components but one.
+func logSumWithout(logs [][]float64, skip int) []float64 {
+	out := make([]float64, len(logs[0]))
+	for c := range out {
+		top := math.Inf(-1)
+		for i := range logs {
+			if i != skip {
+				top = max(top, logs[i][c])
+			}
+		}
+		var sum float64
+		for i := range logs {
+			if i != skip && logs[i][c] > top-40 {
+				sum += math.Exp(logs[i][c] - top)
+			}
+		}
+		out[c] = top + math.Log(sum) // -Inf where there is no other
+		if len(logs) == 1 {
+			out[c] = math.Inf(-1)
+		}
+	}
+	return out
+}
+
+// distance2 returns |L^-1 (x - mean)|^2, with scratch z.
+func distance2(d int, inv, z, x, mean []float64) (q float64) {
+	for a := range d {
+		z[a] = 0
+		for b := range a + 1 {
+			z[a] += inv[a*d+b] * (x[b] - mean[b])
+		}
+		q += z[a] * z[a]
+	}
+	return q
+}
+
 // improve runs expectation-maximisation.
 func (f *mixtureFit) improve(m *fitted, iterations int) error {
+	return f.improveAmong(m, iterations, nil, 1)
+}
+
+// improveAmong does so for some components of a mixture, the logarithm of the
+// others' density held fixed at every cell (nil: there are no others), and the
+// sum of the weights of these.
+func (f *mixtureFit) improveAmong(m *fitted, iterations int, rest []float64, share float64) error {
 	d, k := f.d, len(m.parts)
 	type live struct {
 		logW  float64
@@ -222,19 +290,14 @@ func (f *mixtureFit) improve(m *fitted, iterations int) error {
 			top := math.Inf(-1)
 			for i := range states {
 				s := &states[i]
-				mean := m.parts[i].mean
-				var q float64
-				for a := range d {
-					z[a] = 0
-					for b := range a + 1 {
-						z[a] += s.inv[a*d+b] * (c.mean[b] - mean[b])
-					}
-					q += z[a] * z[a]
-				}
-				p[i] = s.logW - 0.5*q
+				p[i] = s.logW - 0.5*distance2(d, s.inv, z, c.mean, m.parts[i].mean)
 				top = max(top, p[i])
 			}
 			var total float64
+			if rest != nil {
+				top = max(top, rest[ci])
+				total = math.Exp(rest[ci] - top)
+			}
 			for i, v := range p {
 				p[i] = 0
 				if v > top-25 {
@@ -259,13 +322,17 @@ func (f *mixtureFit) improve(m *fitted, iterations int) error {
 			}
 		}
 		m.logL = logL
+		claimed := 0.0
+		for i := range states {
+			claimed += states[i].w
+		}
 		for i := range states {
 			s := &states[i]
 			if s.w*f.n < leastPerPart {
 				return fmt.Errorf("bandwidth: mixture: a component rests on %.3g events: %w", s.w*f.n, ErrNoMinimum)
 			}
 			q := &m.parts[i]
-			q.w = s.w
+			q.w = s.w * share / claimed
 			for a := range d {
 				q.mean[a] = s.first[a] / s.w
 			}

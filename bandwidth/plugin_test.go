@@ -71,7 +71,7 @@ func eventsOf(t testing.TB, x, y []float64, unitX, unitY float64) bandwidth.Even
 	if err != nil {
 		t.Fatal(err)
 	}
-	return bandwidth.Events{Spectrum: s, Covariance: cov}
+	return bandwidth.Events{Spectrum: s, Covariance: cov, Counts: g}
 }
 
 func near(t *testing.T, what string, got, want, rel float64) {

@@ -135,7 +135,7 @@ func (s search) descend(eval func([]float64) (float64, []float64), c coords, x [
 		Func: func(x []float64) float64 { v, _ := at(x); return v },
 		Grad: func(dst, x []float64) { _, g := at(x); copy(dst, g) },
 	}
-	settings := &optimize.Settings{GradientThreshold: 1e-9, MajorIterations: 300, Converger: &optimize.FunctionConverge{Relative: 1e-13, Absolute: 1e-15, Iterations: 8}}
+	settings := &optimize.Settings{GradientThreshold: 1e-9, MajorIterations: 300, Converger: &optimize.FunctionConverge{Relative: 1e-12, Absolute: 1e-15, Iterations: 4}}
 	res, err := optimize.Minimize(problem, x, settings, &optimize.BFGS{})
 	if res == nil || math.IsNaN(res.F) || math.IsInf(res.F, 0) {
 		return minimum{}, false

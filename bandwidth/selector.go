@@ -76,6 +76,10 @@ type Choice struct {
 	Status      Status
 	Evaluations int
 	Notes       []string
+	// Unresolved is the scale at which the lattice stopped the search of a
+	// criterion that falls further, data units; a finer lattice may show a minimum
+	// below. 0 where no search was stopped.
+	Unresolved float64
 }
 
 // gaussR returns R(K) of the Gaussian kernel, (4 pi)^(-d/2). Source: closed form.

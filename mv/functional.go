@@ -90,35 +90,61 @@ func (s *Spectrum) Functionals(g BandwidthMatrix, orders ...int) [][]float64 {
 }
 
 // lineMoments adds sum_i power_i exp(-(a t_i^2 + 2 b t_i + c)/2) t_i^q to
-// moment[q].
+// moment[q]. The frequencies are evenly spaced, so the exponentials follow by
+// two products each, from a fresh start every chunk: relative error below 1e-12.
 func lineMoments(moment, power, freq []float64, a, b, c float64) {
-	freq = freq[:len(power)]
+	const chunk = 32
+	if len(freq) < 2 {
+		addMoments(moment, power, freq, math.Exp(-0.5*((a*freq[0]+2*b)*freq[0]+c)), 1, 1)
+		return
+	}
+	step := freq[1] - freq[0]
+	curve := math.Exp(-a * step * step)
+	for from := 0; from < len(freq); from += chunk {
+		to := min(from+chunk, len(freq))
+		t := freq[from]
+		value := math.Exp(-0.5 * ((a*t+2*b)*t + c))
+		ratio := math.Exp(-0.5 * step * (2*a*t + a*step + 2*b))
+		addMoments(moment, power[from:to], freq[from:to], value, ratio, curve)
+	}
+}
+
+// addMoments adds a chunk whose Gaussian factor starts at value, grows by ratio,
+// and that by curve.
+func addMoments(moment, power, freq []float64, value, ratio, curve float64) {
+	power = power[:len(freq)]
 	switch len(moment) {
 	case 1:
 		var m0 float64
-		for i, t := range freq {
-			m0 += power[i] * math.Exp(-0.5*((a*t+2*b)*t+c))
+		for _, p := range power {
+			m0 += p * value
+			value *= ratio
+			ratio *= curve
 		}
 		moment[0] += m0
 	case 3:
 		var m0, m1, m2 float64
 		for i, t := range freq {
-			v := power[i] * math.Exp(-0.5*((a*t+2*b)*t+c))
+			v := power[i] * value
 			w := v * t
 			m0 += v
 			m1 += w
 			m2 += w * t
+			value *= ratio
+			ratio *= curve
 		}
 		moment[0] += m0
 		moment[1] += m1
 		moment[2] += m2
 	default:
 		for i, t := range freq {
-			v := power[i] * math.Exp(-0.5*((a*t+2*b)*t+c))
+			v := power[i] * value
 			for q := range moment {
 				moment[q] += v
 				v *= t
 			}
+			value *= ratio
+			ratio *= curve
 		}
 	}
 }

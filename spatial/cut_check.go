@@ -26,7 +26,7 @@ func checkOGC(mp orb.MultiPolygon) error {
 		polygons[i] = geom.NewPolygon(rings)
 	}
 	if err := geom.NewMultiPolygon(polygons).Validate(); err != nil {
-		return fmt.Errorf("spatial: %w: %s", errNotValid, err)
+		return fmt.Errorf("spatial: %w: %w", errNotValid, err)
 	}
 	return nil
 }

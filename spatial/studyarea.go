@@ -49,7 +49,7 @@ func NewStudyArea(shape orb.MultiPolygon, proj Projection) (*StudyArea, error) {
 	}
 	for i, p := range shape {
 		if err := geomPolygon(p).Validate(); err != nil {
-			return nil, fmt.Errorf("spatial: polygon %d is not valid: %s: %w", i+1, err, ErrStudyArea)
+			return nil, fmt.Errorf("spatial: polygon %d is not valid: %w: %w", i+1, err, ErrStudyArea)
 		}
 	}
 	w := &StudyArea{}
@@ -208,7 +208,7 @@ func (w *StudyArea) unite(flat MultiPolygon) (MultiPolygon, error) {
 		}
 		g, err := geom.UnionMany(all)
 		if err != nil {
-			return nil, fmt.Errorf("spatial: its polygons cannot be united: %s: %w", err, ErrStudyArea)
+			return nil, fmt.Errorf("spatial: its polygons cannot be united: %w: %w", err, ErrStudyArea)
 		}
 		flat = w.polygonsOf(g)
 	}

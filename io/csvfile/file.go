@@ -137,7 +137,7 @@ func (f *File) malformed(line int, what, remedy string) error {
 func (f *File) readHeader(h io.Reader) error {
 	head := make([]byte, 64<<10)
 	n, err := io.ReadFull(h, head)
-	if err != nil && err != io.EOF && err != io.ErrUnexpectedEOF {
+	if err != nil && !errors.Is(err, io.EOF) && !errors.Is(err, io.ErrUnexpectedEOF) {
 		return f.broken(err)
 	}
 	whole := err != nil

@@ -139,9 +139,6 @@ func (l *leaf) timestamp(utc bool, unit schema.TimeUnitType) {
 // numeric reports whether the values are numbers, not times or codes.
 func (l *leaf) numeric() bool { return l.kind != kindNone && l.kind < kindCode }
 
-// readable reports whether Read yields the column without a Coder of its own.
-func (l *leaf) readable() bool { return l.numeric() || l.class != events.Plain }
-
 // integral turns a stored integer of the column into its value.
 func (l *leaf) integral(n int64) float64 {
 	switch l.kind {

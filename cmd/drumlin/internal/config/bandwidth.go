@@ -9,7 +9,7 @@ import (
 )
 
 // BandwidthNames are the selectors, the default first.
-var BandwidthNames = []string{"auto", "plug-in", "scv", "lscv", "bcv", "likelihood-cv", "normal-reference"}
+var BandwidthNames = []string{"plug-in", "auto", "scv", "lscv", "bcv", "likelihood-cv", "normal-reference"}
 
 // BandwidthSettings are what a run of bandwidth was asked to do.
 type BandwidthSettings struct {
@@ -41,20 +41,24 @@ func LoadBandwidth(flags *pflag.FlagSet, file string, inputs []string) (*Bandwid
 
 // Validate lists all faults at once.
 func (s *BandwidthSettings) Validate() error {
-	c := s.Settings // what the command has no flag for takes any good value
-	c.Out, c.Content, c.Bands, c.RegionRule, c.Lattice, c.Formats = ".", []float64{50}, []float64{8}, "events", "auto", []string{"geojson"}
-	if c.Bandwidth == "all" {
-		c.Bandwidth = BandwidthNames[0]
+	var faults []string
+	if err := s.ValidateInput(); err != nil {
+		faults = append(faults, strings.TrimPrefix(err.Error(), ErrSettings.Error()+": "))
 	}
-	err := c.Validate()
-	if s.Stability != 0 && (s.Stability < 20 || s.Stability > 10000) {
-		more := fmt.Errorf("%w: stability is %d; give 20 to 10000 replicates, or 0 for none", ErrSettings, s.Stability)
-		if err == nil {
-			return more
+	oneOf := func(name, v string, allowed []string) {
+		if !slices.Contains(allowed, v) {
+			faults = append(faults, fmt.Sprintf("%s is %q; choose %s", name, v, strings.Join(allowed, ", ")))
 		}
-		return fmt.Errorf("%w; %s", err, strings.TrimPrefix(more.Error(), ErrSettings.Error()+": "))
 	}
-	return err
+	oneOf("bandwidth", s.Bandwidth, append([]string{"all"}, BandwidthNames...))
+	oneOf("shape", s.Shape, []string{"full", "diagonal", "scalar"})
+	if s.Stability != 0 && (s.Stability < 20 || s.Stability > 10000) {
+		faults = append(faults, fmt.Sprintf("stability is %d; give 20 to 10000 replicates, or 0 for none", s.Stability))
+	}
+	if len(faults) == 0 {
+		return nil
+	}
+	return fmt.Errorf("%w: %s", ErrSettings, strings.Join(faults, "; "))
 }
 
 // Selectors returns the selectors that are to run.

@@ -37,6 +37,7 @@ type TieAccount struct {
 	PerEvent float64 `json:"per_event"`
 	Limit    float64 `json:"limit"`
 	Scale    float64 `json:"scale_m"`
+	Axis     int     `json:"axis"` // 0: at one place; 1, 2: rounded on that axis
 }
 
 // SelectorRow is one selector's choice.
@@ -59,6 +60,7 @@ type SelectorRow struct {
 	Notes     []string  `json:"notes,omitempty"`
 
 	choice bandwidth.Choice
+	wanted float64 // steps of the scale that the search would have gone to
 }
 
 // Stability holds intervals of the ellipse under a smoothed bootstrap.
@@ -181,7 +183,7 @@ func (c *comparison) table(ctx context.Context) (*Table, error) {
 			return nil, err
 		}
 		ties := bandwidth.CountTies(e)
-		out.Ties = TieAccount{Pairs: roundTo3(ties.Pairs), PerEvent: roundTo3(ties.Ratio), Limit: roundTo3(ties.Limit), Scale: roundTo3(ties.Scale)}
+		out.Ties = TieAccount{Pairs: roundTo3(ties.Pairs), PerEvent: roundTo3(ties.Ratio), Limit: roundTo3(ties.Limit), Scale: roundTo3(ties.Scale), Axis: ties.Axis}
 		var coarse []int
 		for _, i := range todo {
 			if rows[i] == "likelihood-cv" && c.sample == nil {
@@ -192,18 +194,17 @@ func (c *comparison) table(ctx context.Context) (*Table, error) {
 			e.Sample = c.sample
 			c.run.report.Stage(rows[i])
 			out.Rows[i] = c.row(rows[i], e, math.Ldexp(1, level))
-			if r := out.Rows[i]; r.Matrix != nil && r.Steps < compareSteps {
+			if r := &out.Rows[i]; r.Matrix != nil && r.wanted < compareSteps {
 				coarse = append(coarse, i)
 			}
 		}
 		finer := len(coarse) > 0 && nodesAt(lo, hi, base, level-1, margin) <= mostNodes
-		if finer && level-1 >= base {
-			todo = coarse
+		if next := c.next(out.Rows, coarse, level, func(l int) bool { return nodesAt(lo, hi, base, l, margin) <= mostNodes }); finer && next >= base {
+			todo, level = coarse, next+1
 			continue
-		}
-		if finer && c.m.canRepeat {
-			c.level = level - 1
-			return nil, c.m.again(lo, hi, level-1)
+		} else if finer && c.m.canRepeat {
+			c.level = next
+			return nil, c.m.again(lo, hi, next)
 		}
 		if err := c.yardstick(out, e); err != nil {
 			return nil, err
@@ -212,10 +213,32 @@ func (c *comparison) table(ctx context.Context) (*Table, error) {
 	}
 }
 
-// events makes the spectrum at a level.
+// next returns the level at which the least of the coarse rows' scales spans
+// enough steps, or the finest that fits.
+func (c *comparison) next(rows []SelectorRow, coarse []int, level int, fits func(level int) bool) int {
+	least := math.Inf(1)
+	for _, i := range coarse {
+		least = min(least, rows[i].wanted)
+	}
+	want := level - max(1, int(math.Ceil(math.Log2(compareSteps/least)-1e-9)))
+	next := level - 1
+	for next > want && fits(next-1) {
+		next--
+	}
+	return next
+}
+
+// events makes the spectrum of the tally at a level. A Gaussian that spans
+// compareSteps steps has died at half of the level's frequencies, so only those
+// are kept: the error is that of the level, the cost that of the next.
 func (c *comparison) events(lo, hi [2]int64, base, level int, margin [2]float64, cov []float64) (bandwidth.Events, error) {
 	n := c.m.tally.EffectiveN()
-	nodes, err := c.m.grid(lo, hi, base, level, margin, c.m.tally.Weighted())
+	weighted := c.m.tally.Weighted()
+	nodes, err := c.m.gridAligned(lo, hi, base, level, level+1, margin, weighted)
+	if err != nil {
+		return bandwidth.Events{}, err
+	}
+	counts, err := c.m.grid(lo, hi, base, level+1, margin, weighted)
 	if err != nil {
 		return bandwidth.Events{}, err
 	}
@@ -227,8 +250,8 @@ func (c *comparison) events(lo, hi [2]int64, base, level int, margin [2]float64,
 	for k := range reach {
 		reach[k] = max(0, kernelReach*math.Sqrt(widest.At(k, k))-margin[k])
 	}
-	spectrum, err := mv.NewSpectrum(nodes, mv.SpectrumOptions{Reach: reach, EffectiveN: n, Workers: c.run.workers})
-	return bandwidth.Events{Spectrum: spectrum, Covariance: cov, Counts: nodes}, err
+	spectrum, err := mv.NewSpectrum(nodes, mv.SpectrumOptions{Reach: reach, Coarsen: 1, EffectiveN: n, Workers: c.run.workers})
+	return bandwidth.Events{Spectrum: spectrum, Covariance: cov, Counts: counts}, err
 }
 
 // row runs one selector. A selector that fails is a row that says why.
@@ -245,6 +268,10 @@ func (c *comparison) row(method string, e bandwidth.Events, step float64) Select
 	r.Method, r.Matrix, r.MatrixHex = choice.Method, choice.Matrix.Entries(), record.HexFloats(choice.Matrix.Entries())
 	r.Major, r.Minor, r.Bearing = ell.Major, ell.Minor, ell.Bearing
 	r.Steps = ell.Minor / step
+	r.wanted = r.Steps
+	if u := choice.Unresolved; u > 0 {
+		r.wanted = min(r.wanted, u/step)
+	}
 	if choice.Status != bandwidth.Closed {
 		v := choice.Criterion
 		r.Criterion = &v

@@ -17,8 +17,12 @@ func (t *Table) Print(w io.Writer) {
 	}
 	fmt.Fprintf(w, " on the plane %s.\n", t.Plane)
 	if t.Ties.PerEvent > 0.01 {
-		fmt.Fprintf(w, "About %s pairs of events lie within %s m of each other: %s per event; above %s least-squares cross-validation has no minimum.\n",
-			Significant(t.Ties.Pairs), Significant(t.Ties.Scale), Significant(t.Ties.PerEvent), Significant(t.Ties.Limit))
+		where := "lie"
+		if t.Ties.Axis > 0 {
+			where = "are neighbours and lie, across " + [...]string{"", "x", "y"}[t.Ties.Axis] + ","
+		}
+		fmt.Fprintf(w, "About %s pairs of events %s within %s m of each other: %s per event; above %s least-squares cross-validation has no minimum.\n",
+			Significant(t.Ties.Pairs), where, Significant(t.Ties.Scale), Significant(t.Ties.PerEvent), Significant(t.Ties.Limit))
 	}
 	fmt.Fprintln(w)
 	tw := tabwriter.NewWriter(w, 0, 4, 2, ' ', tabwriter.AlignRight)

@@ -77,6 +77,15 @@ func (f *finerNeeded) Error() string {
 // KernelAtZero returns K_H(0).
 func (e *Estimate) KernelAtZero() float64 { return 1 / (2 * math.Pi * e.Choice.Matrix.SqrtDet()) }
 
+// stepsAsked returns the lattice steps of the scale that the selector asked for:
+// H's minor scale, or that at which the lattice stopped its search.
+func (e *Estimate) stepsAsked() float64 {
+	if u := e.Choice.Unresolved; u > 0 {
+		return min(e.StepsPerScale, u/e.Choice.Matrix.Ellipse().Minor*e.StepsPerScale)
+	}
+	return e.StepsPerScale
+}
+
 // estimator carries what the steps of one estimate share.
 type estimator struct {
 	tally     *mv.Tally
@@ -132,7 +141,7 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 		if err != nil {
 			return nil, err
 		}
-		if m.nodes == 0 && e.StepsPerScale < stepsWanted && nodesAt(lo, hi, base, level-1, margin) <= mostNodes {
+		if m.nodes == 0 && e.stepsAsked() < stepsWanted && nodesAt(lo, hi, base, level-1, margin) <= mostNodes {
 			if level > base {
 				level--
 				fine = min(fine, level)
