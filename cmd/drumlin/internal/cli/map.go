@@ -29,7 +29,7 @@ func (a *app) mapCommand() *cobra.Command {
   report.html       one page for planners and reviewers
   run.json          what was run, on what, and how it was decided
 
-An input is a Parquet, GeoParquet or CSV file, plain or packed by gzip or zstd, a
+An input is a Parquet, GeoParquet, Arrow or CSV file, plain or packed by gzip or zstd, a
 folder of them, a quoted glob, or - for standard input; the format is told from
 the content. Folders called key=value become columns. Several inputs make one
 set of events.`,
