@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
+	"slices"
 	"strings"
 	"testing"
 
@@ -258,8 +259,11 @@ func TestLikelihoodNamesIsolatedEvents(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	if len(c.Notes) == 0 || !strings.Contains(c.Notes[0], "(11, -12)") {
-		t.Errorf("notes %q do not name the isolated event", c.Notes)
+	if len(c.Isolated) == 0 || !slices.ContainsFunc(c.Isolated, func(at []float64) bool { return at[0] == 11 && at[1] == -12 }) {
+		t.Errorf("isolated events %v lack (11, -12)", c.Isolated)
+	}
+	if len(c.Notes) == 0 || !strings.Contains(c.Notes[0], "stand alone") || strings.Contains(strings.Join(c.Notes, " "), "-12") {
+		t.Errorf("notes %q: they go into records and must tell of isolated events without their places", c.Notes)
 	}
 }
 

@@ -4,7 +4,6 @@ import (
 	"errors"
 	"fmt"
 	"math"
-	"strings"
 
 	"drumlin/mv"
 )
@@ -155,18 +154,13 @@ func LikelihoodCrossValidation(e Events, opt Options) (Choice, error) {
 	}
 	_, _, logs := likelihood(s, c.Matrix)
 	lone := math.Log(kernelAtZero(c.Matrix)/float64(s.Len()-1)) - 4.5
-	var names []string
 	for i, l := range logs {
 		if l < lone {
-			at := make([]string, s.Dim())
-			for k := range at {
-				at[k] = fmt.Sprintf("%.6g", s.At(i, k))
-			}
-			names = append(names, "("+strings.Join(at, ", ")+")")
+			c.Isolated = append(c.Isolated, s.Row(nil, i))
 		}
 	}
-	if len(names) > 0 {
-		c.Notes = append(c.Notes, fmt.Sprintf("%d events stand alone and widen this matrix, at %s", len(names), listed(names, 5)))
+	if n := len(c.Isolated); n > 0 {
+		c.Notes = append(c.Notes, fmt.Sprintf("%d events stand alone and widen this matrix", n))
 	}
 	in.WholeN = max(e.WholeN, e.n())
 	if m := s.EffectiveN(); in.WholeN > 1.0001*m {
@@ -175,12 +169,4 @@ func LikelihoodCrossValidation(e Events, opt Options) (Choice, error) {
 		c.Notes = append(c.Notes, fmt.Sprintf("chosen on a sub-sample of %.0f of %.0f events and multiplied by %.4g", m, in.WholeN, k))
 	}
 	return c, nil
-}
-
-// listed joins at most most names.
-func listed(names []string, most int) string {
-	if len(names) > most {
-		return strings.Join(names[:most], ", ") + fmt.Sprintf(" and %d more", len(names)-most)
-	}
-	return strings.Join(names, ", ")
 }

@@ -76,6 +76,10 @@ type Choice struct {
 	Status      Status
 	Evaluations int
 	Notes       []string
+	// Isolated are the positions of events so far from all others that they widen
+	// the matrix (likelihood cross-validation). They are single events: for the
+	// analyst's own eyes, never for a file that is handed on.
+	Isolated [][]float64
 	// Unresolved is the scale at which the lattice stopped the search of a
 	// criterion that falls further, data units; a finer lattice may show a minimum
 	// below. 0 where no search was stopped.

@@ -220,7 +220,7 @@ func (w *StudyArea) unite(flat MultiPolygon) (MultiPolygon, error) {
 		parts[i] = planeGeom(p)
 	}
 	if err := geom.NewMultiPolygon(parts).Validate(); err != nil {
-		return nil, fmt.Errorf("spatial: not valid on the plane: %s: %w", err, ErrStudyArea)
+		return nil, fmt.Errorf("spatial: not valid on the plane: %w: %w", err, ErrStudyArea)
 	}
 	return flat, nil
 }

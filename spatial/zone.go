@@ -46,7 +46,7 @@ const (
 func (w *StudyArea) Within(o *StudyArea) (*StudyArea, error) {
 	g, err := geom.Intersection(w.geometry(), o.geometry())
 	if err != nil {
-		return nil, fmt.Errorf("spatial: the part within the study area cannot be found: %s: %w", err, ErrStudyArea)
+		return nil, fmt.Errorf("spatial: the part within the study area cannot be found: %w: %w", err, ErrStudyArea)
 	}
 	out := &StudyArea{unit: w.unit}
 	flat := out.polygonsOf(g)

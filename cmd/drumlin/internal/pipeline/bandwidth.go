@@ -6,6 +6,8 @@ import (
 	"fmt"
 	"math"
 	"runtime"
+	"slices"
+	"strings"
 
 	"drumlin/bandwidth"
 	"drumlin/cmd/drumlin/internal/config"
@@ -254,6 +256,27 @@ func (c *comparison) events(lo, hi [2]int64, base, level int, margin [2]float64,
 	return bandwidth.Events{Spectrum: spectrum, Covariance: cov, Counts: counts}, err
 }
 
+// isolatedText names the first isolated events, for the table that only the
+// analyst sees.
+func isolatedText(at [][]float64) string {
+	var names []string
+	for _, p := range at[:min(5, len(at))] {
+		c := make([]string, len(p))
+		for k, v := range p {
+			c[k] = fmt.Sprintf("%.6g", v)
+		}
+		names = append(names, "("+strings.Join(c, ", ")+")")
+	}
+	if len(names) == 0 {
+		return ""
+	}
+	text := "standing alone on the plane: " + strings.Join(names, ", ")
+	if n := len(at) - len(names); n > 0 {
+		text += fmt.Sprintf(" and %d more", n)
+	}
+	return text
+}
+
 // row runs one selector. A selector that fails is a row that says why.
 func (c *comparison) row(method string, e bandwidth.Events, step float64) SelectorRow {
 	r := SelectorRow{Asked: method, Shape: c.shape.String()}
@@ -277,6 +300,9 @@ func (c *comparison) row(method string, e bandwidth.Events, step float64) Select
 		r.Criterion = &v
 	}
 	r.Status, r.Evaluated, r.Notes, r.choice = choice.Status.String(), choice.Evaluations, choice.Notes, choice
+	if text := isolatedText(choice.Isolated); text != "" {
+		r.Notes = append(slices.Clone(r.Notes), text)
+	}
 	if r.Method != method {
 		r.Status = r.Method + " instead, " + r.Status
 	}
