@@ -21,8 +21,12 @@ type Criterion func(h mv.BandwidthMatrix) (value float64, gradient []float64)
 func LSCV(s Sums) Criterion {
 	d, n := s.Dim(), s.EffectiveN()
 	return func(h mv.BandwidthMatrix) (float64, []float64) {
-		wide := s.Functionals(multiple(h, 2), 0, 2)
-		own := s.Functionals(h, 0, 2)
+		var wide, own [][]float64
+		if direct, ok := s.(*DirectSums); ok {
+			wide, own = direct.twoScales(h)
+		} else {
+			wide, own = s.Functionals(multiple(h, 2), 0, 2), s.Functionals(h, 0, 2)
+		}
 		atZero := kernelAtZero(h)
 		grad := make([]float64, d*d)
 		a, b := square2(d, wide[1]), square2(d, own[1])

@@ -21,18 +21,19 @@ func LeastSquaresCV(e Events, opt Options) (Choice, error) {
 	if err := errors.Join(e.check(), opt.check()); err != nil {
 		return Choice{}, err
 	}
-	ties := CountTies(e)
+	near := e.close()
+	ties := CountTies(near)
 	if ties.PastLimit() {
 		c, err := PlugInBy(e, opt)
 		c.Notes = append([]string{fmt.Sprintf("least-squares cross-validation was asked: %s; it has no minimum on such data, and the plug-in matrix was taken instead", ties)}, c.Notes...)
 		return c, err
 	}
-	c, err := searchAround(e, opt, "lscv", LSCV(e.Sums()))
+	c, err := searchAround(e, near, opt, "lscv", LSCV(near.Sums()))
 	if err == nil && c.Status == Border {
 		evaluated, stopped := c.Evaluations, c.Matrix.Eigenvalues()
 		c, err = PlugInBy(e, opt)
 		c.Evaluations += evaluated
-		if e.Spectrum != nil {
+		if near.Spectrum != nil {
 			c.Unresolved = math.Sqrt(stopped[len(stopped)-1])
 		}
 		c.Notes = append([]string{fmt.Sprintf("least-squares cross-validation was asked: its criterion falls down to the least scale that was searched (%s); the plug-in matrix was taken instead", ties)}, c.Notes...)
@@ -77,7 +78,7 @@ func BiasedCV(e Events, opt Options) (Choice, error) {
 	if form == 0 {
 		form = 2
 	}
-	c, err := searchAround(e, opt, "bcv", BCV(e.Sums(), form))
+	c, err := searchAround(e, e, opt, "bcv", BCV(e.Sums(), form))
 	if err == nil && c.Status == Border {
 		return c, fmt.Errorf("bandwidth: bcv: the criterion has no local minimum between the lattice and twice the normal reference: %w", ErrNoMinimum)
 	}
@@ -86,8 +87,8 @@ func BiasedCV(e Events, opt Options) (Choice, error) {
 
 // searchAround minimises a criterion from starts around the plug-in matrix and
 // the normal reference, with walls at the lattice's resolution and at a
-// multiple of the normal reference.
-func searchAround(e Events, opt Options, method string, f Criterion) (Choice, error) {
+// multiple of the normal reference. e gives the starts, near the floor.
+func searchAround(e, near Events, opt Options, method string, f Criterion) (Choice, error) {
 	p, fr, err := plugIn(e, opt)
 	if err != nil {
 		return Choice{}, fmt.Errorf("bandwidth: %s: start: %w", method, err)
@@ -112,7 +113,7 @@ func searchAround(e Events, opt Options, method string, f Criterion) (Choice, er
 		high, descents = 4*nr.Eigenvalues()[0], 0
 		from = [][]float64{co.from(multiple(pi, 0.1)), co.from(multiple(pi, 0.4)), co.from(pi), co.from(multiple(nr, 0.5))}
 	}
-	c, err := fr.descendFrom(e, opt.Shape, f, from, descents, high)
+	c, err := fr.descendFrom(near, opt.Shape, f, from, descents, high)
 	if err != nil {
 		return Choice{}, fmt.Errorf("bandwidth: %s: %w", method, err)
 	}

@@ -145,7 +145,7 @@ func LikelihoodCrossValidation(e Events, opt Options) (Choice, error) {
 	}
 	in := e // sums of all events give the start, the criterion the end
 	in.WholeN = 0
-	c, err := searchAround(in, opt, "likelihood-cv", crit)
+	c, err := searchAround(in, in, opt, "likelihood-cv", crit)
 	if err != nil {
 		return c, err
 	}

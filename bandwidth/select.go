@@ -5,8 +5,7 @@ import (
 	"strings"
 )
 
-// Methods returns the names of the selectors that Select knows, the default
-// first.
+// Methods returns the names of the selectors that Select knows.
 func Methods() []string {
 	return []string{"auto", "plug-in", "scv", "lscv", "bcv", "likelihood-cv", "normal-reference"}
 }

@@ -91,9 +91,12 @@ func gaussR(d int) float64 { return math.Pow(4*math.Pi, -float64(d)/2) }
 
 // Events is what selectors work on: pair sums and second moments of the events.
 type Events struct {
-	Spectrum   *mv.Spectrum // pair sums by frequencies
-	Direct     *DirectSums  // pair sums by the events, used when Spectrum is nil
-	Covariance []float64    // S, row-major, divisor n-1
+	Spectrum *mv.Spectrum // pair sums by frequencies
+	// Direct gives pair sums by the events: used when Spectrum is nil and, where it
+	// holds all events, by least-squares cross-validation, which looks at scales
+	// that a lattice may not resolve.
+	Direct     *DirectSums
+	Covariance []float64 // S, row-major, divisor n-1
 	// Sample holds events for likelihood cross-validation, which is no pair sum;
 	// nil where it is not asked for. It may be a sub-sample.
 	Sample *mv.Sample
@@ -113,6 +116,14 @@ func (e Events) Sums() Sums {
 		return e.Spectrum
 	}
 	return e.Direct
+}
+
+// close returns the events with pair sums that resolve small scales.
+func (e Events) close() Events {
+	if e.Direct != nil && e.Spectrum != nil && e.Direct.EffectiveN() > 0.999*e.Spectrum.EffectiveN() {
+		e.Spectrum = nil
+	}
+	return e
 }
 
 func (e Events) dim() int { return e.Sums().Dim() }

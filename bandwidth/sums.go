@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
+	"slices"
 
 	"drumlin/mv"
 )
@@ -35,7 +36,7 @@ type DirectSums struct {
 
 // NewDirectSums returns the pair sums of a sample. workers 0 means one per
 // processor.
-func NewDirectSums(s *mv.Sample, workers int) *DirectSums { return &DirectSums{s, workers} }
+func NewDirectSums(s *mv.Sample, workers int) *DirectSums { return &DirectSums{inOrder(s), workers} }
 
 // Dim returns the number of axes.
 func (s *DirectSums) Dim() int { return s.sample.Dim() }
@@ -45,6 +46,9 @@ func (s *DirectSums) EffectiveN() float64 { return s.sample.EffectiveN() }
 
 // Functionals implements Sums. It panics where the spectrum's would.
 func (s *DirectSums) Functionals(g mv.BandwidthMatrix, orders ...int) [][]float64 {
+	if slices.Equal(orders, []int{0}) || slices.Equal(orders, []int{0, 2}) {
+		return s.lowOrders(g)[:len(orders)]
+	}
 	out := make([][]float64, len(orders))
 	for i, r := range orders {
 		v, err := mv.DirectFunctionals(context.Background(), s.sample, g, r, mv.EvalOptions{Workers: s.workers})

@@ -62,6 +62,7 @@ type SelectorRow struct {
 	Notes     []string  `json:"notes,omitempty"`
 
 	choice bandwidth.Choice
+	exact  bool    // chosen by sums over the events, not by the lattice
 	wanted float64 // steps of the scale that the search would have gone to
 }
 
@@ -188,12 +189,16 @@ func (c *comparison) table(ctx context.Context) (*Table, error) {
 		out.Ties = TieAccount{Pairs: roundTo3(ties.Pairs), PerEvent: roundTo3(ties.Ratio), Limit: roundTo3(ties.Limit), Scale: roundTo3(ties.Scale), Axis: ties.Axis}
 		var coarse []int
 		for _, i := range todo {
-			if rows[i] == "likelihood-cv" && c.sample == nil {
+			few := t.Events() <= bandwidth.SubSample // then the sample is all of them
+			if (rows[i] == "likelihood-cv" || rows[i] == "lscv" && few) && c.sample == nil {
 				if c.sample, err = c.in.drawSample(ctx, c.run.sources, c.pool, occupiedBox(t), bandwidth.SubSample); err != nil {
 					return nil, err
 				}
 			}
 			e.Sample = c.sample
+			if few && c.sample != nil {
+				e.Direct = bandwidth.NewDirectSums(c.sample, c.run.workers)
+			}
 			c.run.report.Stage(rows[i])
 			out.Rows[i] = c.row(rows[i], e, math.Ldexp(1, level))
 			if r := &out.Rows[i]; r.Matrix != nil && r.wanted < compareSteps {
@@ -295,6 +300,9 @@ func (c *comparison) row(method string, e bandwidth.Events, step float64) Select
 	if u := choice.Unresolved; u > 0 {
 		r.wanted = min(r.wanted, u/step)
 	}
+	if r.exact = method == "lscv" && e.Direct != nil; r.exact {
+		r.wanted = math.Inf(1)
+	}
 	if choice.Status != bandwidth.Closed {
 		v := choice.Criterion
 		r.Criterion = &v
@@ -328,7 +336,7 @@ func (c *comparison) yardstick(t *Table, e bandwidth.Events) error {
 		}
 		r.AMISE = a.Total
 		least = min(least, a.Total)
-		if r.Steps < stepsWanted {
+		if r.Steps < stepsWanted && !r.exact {
 			r.Notes = append(r.Notes, fmt.Sprintf("the minor scale spans %.2g lattice steps, fewer than %g: the criterion there is partly the lattice's", r.Steps, stepsWanted))
 		}
 	}
