@@ -67,27 +67,43 @@ func (t *Tally) quantile(axis int, q float64) float64 {
 // went. Extremes that stretch the lattice little are kept.
 func (t *Tally) TrimStrays() int64 {
 	box := t.CoreBox()
-	lo, hi := t.Bounds()
-	step := t.Step()
-	longest, core := 0.0, 0.0
-	for k := range 2 {
-		from, to := float64(lo[k])*step, float64(hi[k])*step
-		longest = max(longest, to-from)
-		core = max(core, min(to, box.Max[k])-max(from, box.Min[k]))
-	}
-	if core > longest/2 {
-		return 0
-	}
 	var strays int64
+	all, core := tileSpan{}, tileSpan{}
 	for _, tl := range t.tiles {
-		if !t.meets(tl, box) {
+		all.add(tl.key)
+		if t.meets(tl, box) {
+			core.add(tl.key)
+		} else {
 			strays += tl.events(t.level - t.grain)
 		}
+	}
+	if 2*core.longest() > all.longest() {
+		return 0
 	}
 	if strays > max(10, t.events/100) || strays*20 > t.events {
 		return 0
 	}
 	return t.Trim(box)
+}
+
+// tileSpan is the range of some tiles on each axis.
+type tileSpan struct {
+	lo, hi tileKey
+	some   bool
+}
+
+func (s *tileSpan) add(k tileKey) {
+	if !s.some {
+		s.lo, s.hi, s.some = k, k, true
+		return
+	}
+	s.lo = tileKey{min(s.lo.x, k.x), min(s.lo.y, k.y)}
+	s.hi = tileKey{max(s.hi.x, k.x), max(s.hi.y, k.y)}
+}
+
+// longest returns the tiles along the longer axis.
+func (s *tileSpan) longest() int64 {
+	return 1 + max(int64(s.hi.x)-int64(s.lo.x), int64(s.hi.y)-int64(s.lo.y))
 }
 
 // meets reports whether the tile's closed square shares a point with the box.

@@ -62,7 +62,7 @@ func estimated(t *testing.T, name string, flags map[string]string) (e *Estimate,
 		if err != nil {
 			t.Fatal(err)
 		}
-		c.tally.Trim(c.tally.CoreBox())
+		c.tally.TrimStrays()
 		if n := c.tally.Outside(); n != 0 {
 			t.Fatalf("%d events left out", n)
 		}
