@@ -18,6 +18,7 @@ const (
 	kernelReach  = 7.0  // a Gaussian is zero, for double precision, beyond this many scales
 	wantedError  = 3e-5 // of the density's maximum, from binning
 	countRefine  = 2    // doublings by which events are counted finer than the lattice
+	manyEvents   = 5e4  // above, one doubling does: a border cuts off a smaller share
 	cheapEvents  = 2e6  // up to here another pass over the events costs little
 )
 
@@ -127,8 +128,8 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 	for level > base-8 && nodesAt(lo, hi, base, level-1, margin) <= most {
 		level--
 	}
-	if base > level-countRefine && m.cheapRepeat() {
-		return nil, m.again(lo, hi, level-countRefine)
+	if base > level-m.refine() && m.cheapRepeat() {
+		return nil, m.again(lo, hi, level-m.refine())
 	}
 	level = max(level, base)
 	fine := level
@@ -148,7 +149,7 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 				continue
 			}
 			if m.canRepeat {
-				return nil, m.again(lo, hi, level-1-countRefine)
+				return nil, m.again(lo, hi, level-1-m.refine())
 			}
 		}
 		if want := wantedLevel(e, level); want < fine {
@@ -160,10 +161,10 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 				fine = base
 				continue
 			case m.cheapRepeat():
-				return nil, m.again(lo, hi, min(want, level-countRefine))
+				return nil, m.again(lo, hi, min(want, level-m.refine()))
 			}
 		}
-		if fine := max(base, level-countRefine); fine < level {
+		if fine := max(base, level-m.refine()); fine < level {
 			if e.FineCounts, err = m.gridAligned(lo, hi, base, fine, level, margin, false); err != nil {
 				return nil, err
 			}
@@ -185,6 +186,14 @@ func (m *estimator) estimate(ctx context.Context) (*Estimate, error) {
 		e.Bias = spectrum.SmoothingBias(e.Choice.Matrix, e.BiasPilot.Matrix)
 		return e, nil
 	}
+}
+
+// refine returns the doublings by which events are counted finer than the lattice.
+func (m *estimator) refine() int {
+	if m.tally.Events() > manyEvents {
+		return countRefine - 1
+	}
+	return countRefine
 }
 
 // cheapRepeat reports whether another pass is worth while for a finer lattice
