@@ -65,7 +65,7 @@ func DensityQuantile(values, weights []float64, content float64) (float64, error
 // contributes atZero/n to the estimate at its place, so its leave-one-out
 // density is (n*q - K_H(0))/(n-1), an increasing map. A region cut at that
 // value holds its content for events not yet seen, where the plain quantile
-// holds too little (METHODS of the field: see the tests for figures). n is the
+// holds too little: content_test.go in bandwidth measures both. n is the
 // effective sample size.
 func LeaveOneOut(q, n, atZero float64) float64 { return (n*q - atZero) / (n - 1) }
 

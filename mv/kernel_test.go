@@ -182,3 +182,16 @@ func ExampleKernel() {
 	fmt.Printf("R(K) %.4f, mu2 %.4f; a Gaussian H times %.3f smooths alike\n", mv.Epanechnikov.R(2), mv.Epanechnikov.Mu2(2), h)
 	// Output: R(K) 0.4244, mu2 0.1667; a Gaussian H times 5.769 smooths alike
 }
+
+// The product of one-dimensional Epanechnikov kernels against the radial one:
+// the figures were computed for the design by two routes and agree with .982,
+// .953 and .916 of Wand and Jones 1995, Table 4.1 (from memory). Both sides come
+// from the constants: R of a product is R(1)^d, its second moment that of one axis.
+func TestProductKernelEfficiency(t *testing.T) {
+	k := mv.Epanechnikov
+	for d, want := range map[int]float64{2: 0.98243792, 3: 0.95316381, 4: 0.91617100} {
+		half := float64(d) / 2
+		got := k.R(d) * math.Pow(k.Mu2(d), half) / (math.Pow(k.R(1), float64(d)) * math.Pow(k.Mu2(1), half))
+		mvtest.NearAbs(t, fmt.Sprintf("d = %d", d), got, want, 5e-9)
+	}
+}

@@ -72,6 +72,7 @@ func runScripts(t *testing.T, dir string) {
 			"empty":       cmdEmpty,
 			"extract":     cmdExtract,
 			"pack":        cmdPack,
+			"join":        cmdJoin,
 		},
 	})
 }
@@ -632,4 +633,25 @@ func cmdBalanced(ts *testscript.TestScript, neg bool, args []string) {
 	if events := number(rec["tally"].(map[string]any)["events"]); events != number(rows["used"]) {
 		ts.Fatalf("%d events in the tally, %d rows used", events, number(rows["used"]))
 	}
+}
+
+// cmdJoin writes files one after the other: join [-rows] out file... With -rows
+// the first line of every file but the first, its header, is left out.
+func cmdJoin(ts *testscript.TestScript, neg bool, args []string) {
+	rows := len(args) > 0 && args[0] == "-rows"
+	if rows {
+		args = args[1:]
+	}
+	if neg || len(args) < 2 {
+		ts.Fatalf("usage: join [-rows] out file...")
+	}
+	var all []byte
+	for i, name := range args[1:] {
+		data := []byte(ts.ReadFile(name))
+		if rows && i > 0 {
+			_, data, _ = bytes.Cut(data, []byte("\n"))
+		}
+		all = append(all, data...)
+	}
+	ts.Check(os.WriteFile(ts.MkAbs(args[0]), all, 0o666))
 }

@@ -16,7 +16,10 @@ import (
 func TestDiskFull(t *testing.T) {
 	disk := t.TempDir()
 	if err := syscall.Mount("tmpfs", disk, "tmpfs", 0, "size=64k"); err != nil {
-		t.Skipf("no right to mount a small disk (%v)", err)
+		if os.Getenv("DRUMLIN_CI") == "1" {
+			t.Fatalf("no right to mount a small disk (%v); the check must not be left out here", err)
+		}
+		t.Skipf("left out: no right to mount a small disk (%v)", err)
 	}
 	defer syscall.Unmount(disk, 0)
 	b := create(t, filepath.Join(disk, "out"), bundle.Options{})

@@ -33,7 +33,7 @@ func Describe(w io.Writer, res *Result) {
 		whole = r[len(r)-1].AreaKM2
 	}
 	for _, r := range res.Release.Regions() {
-		fmt.Fprintf(w, "%2.0f %% of events: %s on %s km2", 100*r.Content, parts(len(r.Shape)), Significant(r.AreaKM2))
+		fmt.Fprintf(w, "%2.0f %% of events: %s on %s km2", 100*r.Content, parts(len(r.Plane)), Significant(r.AreaKM2))
 		if r.AreaKM2 < whole {
 			fmt.Fprintf(w, " (%s %% of the widest region)", Significant(100*r.AreaKM2/whole))
 		}
